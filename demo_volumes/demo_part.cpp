@@ -1,0 +1,1 @@
+#include "demo_volumes/demo_part.h"

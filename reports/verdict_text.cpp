@@ -1,0 +1,1 @@
+#include "reports/verdict_text.h"
