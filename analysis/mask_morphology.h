@@ -1,5 +1,8 @@
-// Exact Euclidean distances up to a cap, by separable minimum of parabolas over a window of the cap's width.
-// A slab job with a halo of the cap; slabs of plain rows cost almost nothing.
+// Set algebra, balls and components on voxel masks kept as runs.
+//
+// Dilation and erosion by a ball are exact: squared Euclidean distances up to the ball's radius by a
+// separable minimum of parabolas (Saito & Toriwaki 1994) over a window of the radius, tile by tile; tiles of
+// plain inside or plain outside cost nothing. Distances are between voxel centres.
 #pragma once
 
 #include <array>
@@ -12,11 +15,11 @@
 
 namespace halfmark {
 
-// Voxels of `mask` grown by a ball of radius_mm (centres within radius_mm of a centre in the mask), within
-// the volume.
+// Voxels within radius_mm (inclusive) of a voxel of the mask, within the volume.
 RunMask dilate(const RunMask& mask, double radius_mm, const Vec3& spacing_mm, const RunControl& control = {});
-// Voxels of `mask` whose distance to the nearest voxel centre outside the mask exceeds radius_mm. What lies
-// beyond the volume's border counts as in the mask when `border_inside`, else as outside.
+
+// Voxels of the mask farther than radius_mm from every voxel outside the mask. What lies beyond the volume's
+// border counts as inside the mask when `border_inside`, else as outside.
 RunMask erode(const RunMask& mask, double radius_mm, const Vec3& spacing_mm, bool border_inside,
               const RunControl& control = {});
 
@@ -25,11 +28,18 @@ RunMask intersection(const RunMask& a, const RunMask& b);
 RunMask union_of(const RunMask& a, const RunMask& b);
 RunMask difference(const RunMask& a, const RunMask& b);
 
-// Components of a mask, numbered from 1 in order of their first voxel (z, y, x). connectivity: 6, 18 or 26.
+// The mask in a volume that is larger by `margin` voxels on every side (negative: cropped).
+RunMask padded(const RunMask& mask, std::int64_t margin);
+
+// Components of a mask, numbered from 1 in order of their first voxel (z, then y, then x).
 struct Components {
   RunLabels labels;
   std::int32_t count = 0;
 };
+// connectivity: 6, 18 or 26.
 Components connected_components(const RunMask& mask, int connectivity);
+
+// The voxels of the components whose flag (index: label) is not zero.
+RunMask selected(const RunLabels& labels, const std::vector<std::uint8_t>& keep);
 
 }  // namespace halfmark

@@ -26,6 +26,13 @@ class RunRows {
   explicit RunRows(const std::array<std::int64_t, 3>& size) : size_(size) { row_start_.push_back(0); }
 
   const std::array<std::int64_t, 3>& size() const { return size_; }
+  // Appends all rows of the planes that follow (a slab's result behind the slabs before it).
+  void append(const RunRows& next) {
+    const std::size_t offset = runs_.size();
+    runs_.insert(runs_.end(), next.runs_.begin(), next.runs_.end());
+    for (std::size_t r = 1; r < next.row_start_.size(); ++r)
+      row_start_.push_back(offset + next.row_start_[r]);
+  }
   void add_run(const R& run) { runs_.push_back(run); }
   void end_row() { row_start_.push_back(runs_.size()); }
 
@@ -58,6 +65,9 @@ class RunRows {
 
 using RunMask = RunRows<Run>;
 using RunLabels = RunRows<LabelRun>;
+
+// Runs of the voxels of one row whose flag is not zero, appended to `mask` as its next row.
+void add_row_of_flags(RunMask& mask, const std::uint8_t* flags, std::int64_t count);
 
 // True if voxel (x, y, z) is in the mask; false outside the volume.
 bool contains(const RunMask& mask, std::int64_t x, std::int64_t y, std::int64_t z);
