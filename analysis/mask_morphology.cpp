@@ -1,10 +1,13 @@
 #include "analysis/mask_morphology.h"
 
+#include <tbb/enumerable_thread_specific.h>
 #include <tbb/parallel_for.h>
 
 #include <algorithm>
 #include <cmath>
 #include <cstring>
+
+#include "analysis/wide_registers.h"
 
 namespace halfmark {
 
@@ -93,70 +96,111 @@ void distances_along_x(std::span<const Run> row, std::int64_t begin, std::int64_
   }
 }
 
-void lower_to(std::int16_t* out, const std::int16_t* in, std::int16_t cost, std::int64_t count) {
+// What a row of squared distances holds: lets whole rows be passed over.
+enum class RowContent : std::uint8_t { far, some, zero };
+
+RowContent content_of(const std::int16_t* row, std::int64_t count) {
+  std::int16_t least = far_away, most = 0;
   for (std::int64_t x = 0; x < count; ++x) {
-    const auto through = static_cast<std::int16_t>(in[x] + cost);
-    out[x] = std::min(out[x], through);
+    least = std::min(least, row[x]);
+    most = std::max(most, row[x]);
+  }
+  return least == far_away ? RowContent::far : most == 0 ? RowContent::zero : RowContent::some;
+}
+
+struct RowWithCost {
+  const std::int16_t* row;
+  std::int16_t cost;
+};
+
+// out[x] = least over the rows of row[x] + cost, at most far_away. Integers only: the same bits on every
+// machine.
+HALFMARK_FOR_WIDE_REGISTERS
+void lowest_of(const RowWithCost* rows, std::size_t row_count, std::int64_t count, std::int16_t* out) {
+  for (std::int64_t x = 0; x < count; ++x) out[x] = far_away;
+  for (std::size_t r = 0; r < row_count; ++r) {
+    const std::int16_t* row = rows[r].row;
+    const std::int16_t cost = rows[r].cost;
+    for (std::int64_t x = 0; x < count; ++x) {
+      const auto through = static_cast<std::int16_t>(row[x] + cost);
+      out[x] = std::min(out[x], through);
+    }
   }
 }
 
-// Working memory of one task, kept between tiles.
+// Working memory of one thread, kept between tiles.
 struct TileBuffers {
   std::vector<std::int16_t> along_x, along_xy, along_xyz;
-  std::vector<std::uint8_t> row_is_far, plane_row_is_far;
+  std::vector<RowContent> x_content, xy_content;
+  std::vector<RowWithCost> rows;
+  std::vector<std::uint8_t> tile_flags, strip_flags;
 };
 
+// Lowers along one axis for output position `at`: sources [begin, end), source s at data + (s - begin) *
+// stride. Returns false when every source is far.
+bool lower_along(const std::int16_t* data, const RowContent* content, std::int64_t content_stride,
+                 std::int64_t stride, std::int64_t begin, std::int64_t end, std::int64_t at,
+                 const std::vector<std::int16_t>& square, std::int64_t nx, std::vector<RowWithCost>& rows,
+                 std::int16_t* out, RowContent& result) {
+  const auto reach = static_cast<std::int64_t>(square.size()) - 1;
+  if (content[(at - begin) * content_stride] == RowContent::zero) {
+    std::fill(out, out + nx, std::int16_t{0});
+    result = RowContent::zero;
+    return true;
+  }
+  rows.clear();
+  for (std::int64_t from = std::max(begin, at - reach); from < std::min(end, at + reach + 1); ++from) {
+    if (content[(from - begin) * content_stride] == RowContent::far) continue;
+    rows.push_back({data + (from - begin) * stride, square[static_cast<std::size_t>(std::abs(from - at))]});
+  }
+  result = rows.empty() ? RowContent::far : RowContent::some;
+  if (rows.empty()) return false;
+  lowest_of(rows.data(), rows.size(), nx, out);
+  return true;
+}
+
 // Flags of the tile's voxels within the ball's radius of the mask: extent x * y * z bytes, x fastest.
-void dilate_tile(const RunMask& mask, const Span3& tile, const Ball& ball, TileBuffers& buffers,
-                 std::uint8_t* flags) {
+void dilate_tile(const RunMask& mask, const Span3& tile, const Ball& ball, TileBuffers& buffers) {
   const auto& size = mask.size();
-  const std::int64_t nx = tile.extent(0), ny = tile.extent(1), nz = tile.extent(2);
+  const std::int64_t nx = tile.extent(0), ny = tile.extent(1);
   const std::int64_t z_begin = std::max<std::int64_t>(0, tile.begin[2] - ball.reach(2));
   const std::int64_t z_end = std::min(size[2], tile.end[2] + ball.reach(2));
   const std::int64_t y_begin = std::max<std::int64_t>(0, tile.begin[1] - ball.reach(1));
   const std::int64_t y_end = std::min(size[1], tile.end[1] + ball.reach(1));
-  const std::int64_t rows = y_end - y_begin, planes = z_end - z_begin;
-  buffers.along_x.resize(static_cast<std::size_t>(rows * nx));
-  buffers.row_is_far.resize(static_cast<std::size_t>(rows));
-  buffers.along_xy.resize(static_cast<std::size_t>(planes * ny * nx));
-  buffers.plane_row_is_far.assign(static_cast<std::size_t>(planes * ny), 1);
+  buffers.along_x.resize(static_cast<std::size_t>((y_end - y_begin) * nx));
+  buffers.x_content.resize(static_cast<std::size_t>(y_end - y_begin));
+  buffers.along_xy.resize(static_cast<std::size_t>((z_end - z_begin) * ny * nx));
+  buffers.xy_content.resize(static_cast<std::size_t>((z_end - z_begin) * ny));
   for (std::int64_t z = z_begin; z < z_end; ++z) {
     for (std::int64_t y = y_begin; y < y_end; ++y) {
       std::int16_t* out = buffers.along_x.data() + (y - y_begin) * nx;
       distances_along_x(mask.row(y, z), tile.begin[0], tile.end[0], ball, out);
-      buffers.row_is_far[static_cast<std::size_t>(y - y_begin)] =
-          std::all_of(out, out + nx, [](std::int16_t d) { return d == far_away; });
+      buffers.x_content[static_cast<std::size_t>(y - y_begin)] = content_of(out, nx);
     }
     for (std::int64_t y = tile.begin[1]; y < tile.end[1]; ++y) {
       const std::int64_t r = (z - z_begin) * ny + (y - tile.begin[1]);
-      std::int16_t* out = buffers.along_xy.data() + r * nx;
-      std::fill(out, out + nx, far_away);
-      for (std::int64_t from = std::max(y_begin, y - ball.reach(1));
-           from < std::min(y_end, y + ball.reach(1) + 1); ++from) {
-        if (buffers.row_is_far[static_cast<std::size_t>(from - y_begin)]) continue;
-        lower_to(out, buffers.along_x.data() + (from - y_begin) * nx,
-                 ball.square[1][static_cast<std::size_t>(std::abs(from - y))], nx);
-        buffers.plane_row_is_far[static_cast<std::size_t>(r)] = 0;
-      }
+      lower_along(buffers.along_x.data(), buffers.x_content.data(), 1, nx, y_begin, y_end, y, ball.square[1],
+                  nx, buffers.rows, buffers.along_xy.data() + r * nx,
+                  buffers.xy_content[static_cast<std::size_t>(r)]);
     }
   }
   buffers.along_xyz.resize(static_cast<std::size_t>(nx));
-  std::int16_t* nearest = buffers.along_xyz.data();
+  buffers.tile_flags.resize(static_cast<std::size_t>(tile.extent(2) * ny * nx));
   for (std::int64_t z = tile.begin[2]; z < tile.end[2]; ++z) {
     for (std::int64_t y = 0; y < ny; ++y) {
-      std::fill(nearest, nearest + nx, far_away);
-      for (std::int64_t from = std::max(z_begin, z - ball.reach(2));
-           from < std::min(z_end, z + ball.reach(2) + 1); ++from) {
-        const std::int64_t r = (from - z_begin) * ny + y;
-        if (buffers.plane_row_is_far[static_cast<std::size_t>(r)]) continue;
-        lower_to(nearest, buffers.along_xy.data() + r * nx,
-                 ball.square[2][static_cast<std::size_t>(std::abs(from - z))], nx);
+      std::uint8_t* out = buffers.tile_flags.data() + ((z - tile.begin[2]) * ny + y) * nx;
+      RowContent content = RowContent::far;
+      const bool near =
+          lower_along(buffers.along_xy.data() + y * nx, buffers.xy_content.data() + y, ny, ny * nx, z_begin,
+                      z_end, z, ball.square[2], nx, buffers.rows, buffers.along_xyz.data(), content);
+      if (!near) {
+        std::memset(out, 0, static_cast<std::size_t>(nx));
+        continue;
       }
-      std::uint8_t* out = flags + ((z - tile.begin[2]) * ny + y) * nx;
-      for (std::int64_t x = 0; x < nx; ++x) out[x] = nearest[x] <= ball.limit;
+      for (std::int64_t x = 0; x < nx; ++x)
+        out[x] = buffers.along_xyz[static_cast<std::size_t>(x)] <= ball.limit;
     }
   }
-  (void)nz;
 }
 
 Span3 grown(const Span3& tile, const Ball& ball, const std::array<std::int64_t, 3>& size) {
@@ -169,44 +213,45 @@ Span3 grown(const Span3& tile, const Ball& ball, const std::array<std::int64_t, 
   return out;
 }
 
-// One strip: rows [y0, y1) of planes [z0, z1) over the whole width, as flags.
-void dilate_strip(const RunMask& mask, const Span3& strip, const Ball& ball,
-                  std::vector<std::uint8_t>& flags) {
+// One strip: rows [y0, y1) of planes [z0, z1) over the whole width, as flags in the buffers.
+void dilate_strip(const RunMask& mask, const Span3& strip, const Ball& ball, TileBuffers& buffers) {
   const auto& size = mask.size();
-  const std::int64_t ny = strip.extent(1), nz = strip.extent(2);
-  flags.assign(static_cast<std::size_t>(size[0] * ny * nz), 0);
-  TileBuffers buffers;
-  std::vector<std::uint8_t> tile_flags;
+  const std::int64_t rows = strip.extent(1) * strip.extent(2);
+  buffers.strip_flags.resize(static_cast<std::size_t>(size[0] * rows));
   for (std::int64_t x = 0; x < size[0]; x += tile_edge) {
     Span3 tile = strip;
     tile.begin[0] = x;
     tile.end[0] = std::min(x + tile_edge, size[0]);
-    const std::int64_t nx = tile.extent(0);
+    const auto nx = static_cast<std::size_t>(tile.extent(0));
     const Content content = content_of(mask, grown(tile, ball, size));
-    if (content == Content::none) continue;
-    if (content == Content::all) {
-      tile_flags.assign(static_cast<std::size_t>(nx * ny * nz), 1);
-    } else {
-      tile_flags.resize(static_cast<std::size_t>(nx * ny * nz));
-      dilate_tile(mask, tile, ball, buffers, tile_flags.data());
+    if (content == Content::some) dilate_tile(mask, tile, ball, buffers);
+    for (std::int64_t r = 0; r < rows; ++r) {
+      std::uint8_t* out = buffers.strip_flags.data() + r * size[0] + x;
+      if (content == Content::some) {
+        std::memcpy(out, buffers.tile_flags.data() + static_cast<std::size_t>(r) * nx, nx);
+      } else {
+        std::memset(out, content == Content::all, nx);
+      }
     }
-    for (std::int64_t r = 0; r < ny * nz; ++r)
-      std::memcpy(flags.data() + r * size[0] + x, tile_flags.data() + r * nx, static_cast<std::size_t>(nx));
   }
 }
 
-RunMask dilate_slab(const RunMask& mask, std::int64_t z_begin, std::int64_t z_end, const Ball& ball) {
+using ThreadBuffers = tbb::enumerable_thread_specific<TileBuffers>;
+
+RunMask dilate_slab(const RunMask& mask, std::int64_t z_begin, std::int64_t z_end, const Ball& ball,
+                    ThreadBuffers& thread_buffers) {
   const auto& size = mask.size();
   const std::int64_t strips = (size[1] + tile_edge - 1) / tile_edge;
   std::vector<RunMask> parts(static_cast<std::size_t>(strips));
   tbb::parallel_for(std::int64_t{0}, strips, [&](std::int64_t s) {
     const Span3 strip{{0, s * tile_edge, z_begin}, {size[0], std::min(size[1], (s + 1) * tile_edge), z_end}};
-    std::vector<std::uint8_t> flags;
-    dilate_strip(mask, strip, ball, flags);
+    TileBuffers& buffers = thread_buffers.local();
+    dilate_strip(mask, strip, ball, buffers);
+    const std::uint8_t* flags = buffers.strip_flags.data();
     RunMask& part = parts[static_cast<std::size_t>(s)];
     part = RunMask({size[0], strip.extent(1), strip.extent(2)});
     for (std::int64_t r = 0; r < strip.extent(1) * strip.extent(2); ++r)
-      add_row_of_flags(part, flags.data() + r * size[0], size[0]);
+      add_row_of_flags(part, flags + r * size[0], size[0]);
   });
   RunMask out({size[0], size[1], z_end - z_begin});
   for (std::int64_t z = 0; z < z_end - z_begin; ++z) {
@@ -227,10 +272,11 @@ RunMask dilate(const RunMask& mask, double radius_mm, const Vec3& spacing_mm, co
   const auto& size = mask.size();
   const std::int64_t slabs = (size[2] + tile_edge - 1) / tile_edge;
   std::vector<RunMask> parts(static_cast<std::size_t>(slabs));
+  ThreadBuffers buffers;
   tbb::parallel_for(std::int64_t{0}, slabs, [&](std::int64_t s) {
     if (control.cancelled()) return;
     parts[static_cast<std::size_t>(s)] =
-        dilate_slab(mask, s * tile_edge, std::min(size[2], (s + 1) * tile_edge), ball);
+        dilate_slab(mask, s * tile_edge, std::min(size[2], (s + 1) * tile_edge), ball, buffers);
   });
   control.throw_if_cancelled();
   RunMask out(size);

@@ -94,21 +94,47 @@ Body to_mm(const BodyVoxels& body, const VolumeGeometry& geometry) {
   return out;
 }
 
+void mark_overlaps(std::span<const LabelRun> runs, std::span<const Run> row, std::int32_t reach,
+                   std::vector<std::uint8_t>& marked) {
+  std::size_t j = 0;
+  for (const LabelRun& run : runs) {
+    while (j < row.size() && row[j].end + reach <= run.begin) ++j;
+    if (j < row.size() && row[j].begin - reach < run.end) marked[static_cast<std::size_t>(run.label)] = 1;
+  }
+}
+
 // Labels of components of which a voxel lies in `mask`.
-std::vector<std::uint8_t> labels_touching(const RunLabels& labels, std::int32_t count, const RunMask& mask) {
-  std::vector<std::uint8_t> touching(static_cast<std::size_t>(count) + 1, 0);
+std::vector<std::uint8_t> labels_in(const RunLabels& labels, std::int32_t count, const RunMask& mask) {
+  std::vector<std::uint8_t> marked(static_cast<std::size_t>(count) + 1, 0);
+  const auto& size = labels.size();
+  for (std::int64_t z = 0; z < size[2]; ++z) {
+    for (std::int64_t y = 0; y < size[1]; ++y) mark_overlaps(labels.row(y, z), mask.row(y, z), 0, marked);
+  }
+  return marked;
+}
+
+// Labels of components of which a voxel is a 6-neighbour of `mask`.
+std::vector<std::uint8_t> labels_beside(const RunLabels& labels, std::int32_t count, const RunMask& mask) {
+  std::vector<std::uint8_t> marked(static_cast<std::size_t>(count) + 1, 0);
   const auto& size = labels.size();
   for (std::int64_t z = 0; z < size[2]; ++z) {
     for (std::int64_t y = 0; y < size[1]; ++y) {
-      const auto row = mask.row(y, z);
-      std::size_t j = 0;
-      for (const LabelRun& run : labels.row(y, z)) {
-        while (j < row.size() && row[j].end <= run.begin) ++j;
-        if (j < row.size() && row[j].begin < run.end) touching[static_cast<std::size_t>(run.label)] = 1;
-      }
+      const auto runs = labels.row(y, z);
+      if (runs.empty()) continue;
+      mark_overlaps(runs, mask.row(y, z), 1, marked);
+      if (y > 0) mark_overlaps(runs, mask.row(y - 1, z), 0, marked);
+      if (y + 1 < size[1]) mark_overlaps(runs, mask.row(y + 1, z), 0, marked);
+      if (z > 0) mark_overlaps(runs, mask.row(y, z - 1), 0, marked);
+      if (z + 1 < size[2]) mark_overlaps(runs, mask.row(y, z + 1), 0, marked);
     }
   }
-  return touching;
+  return marked;
+}
+
+RunMask empty_mask(const std::array<std::int64_t, 3>& size) {
+  RunMask out(size);
+  for (std::int64_t r = 0; r < size[1] * size[2]; ++r) out.end_row();
+  return out;
 }
 
 // The row of the field of view that stands for row (y, z): itself, or the nearest one in its plane that is
@@ -183,21 +209,19 @@ Hollows sort_hollows(const RunMask& hollow, const RunMask& outside, const PartOp
                      const Vec3& spacing_mm, const RunControl& control) {
   const Components parts = connected_components(hollow, 6);
   const double voxel = std::cbrt(spacing_mm[0] * spacing_mm[1] * spacing_mm[2]);
-  // The thinnest ball that still reaches the 6-neighbours of the outside.
-  const double neighbour = *std::max_element(spacing_mm.begin(), spacing_mm.end()) * 1.001;
-  const RunMask rim = dilate(outside, neighbour, spacing_mm, control);
-  const auto connected = labels_touching(parts.labels, parts.count, rim);
-  const RunMask open = selected(parts.labels, connected);
+  const RunMask open = selected(parts.labels, labels_beside(parts.labels, parts.count, outside));
+  if (open.empty()) return {open, open};
 
   const double inscribed = min_inscribed_share * options.closing_radius_mm + centre_to_face_voxels * voxel;
   const RunMask cores = erode(open, inscribed, spacing_mm, true, control);
+  if (cores.empty()) return {cores, open};
   const RunMask wide = intersection(open, dilate(cores, inscribed + voxel, spacing_mm, control));
   const Components pores = connected_components(wide, 6);
   const RunMask deep = options.open_min_depth_mm > 0
                            ? difference(wide, dilate(outside, options.open_min_depth_mm, spacing_mm, control))
                            : wide;
   Hollows out;
-  out.open = selected(pores.labels, labels_touching(pores.labels, pores.count, deep));
+  out.open = selected(pores.labels, labels_in(pores.labels, pores.count, deep));
   out.shallow = difference(open, out.open);
   return out;
 }
@@ -275,8 +299,7 @@ PartMap find_part(const VolumeSource& source, const FieldOfView& field, const Gr
     }
   } else {
     part.inside = field.rows;
-    part.open_air = RunMask(geometry.size);
-    for (std::int64_t r = 0; r < geometry.size[1] * geometry.size[2]; ++r) part.open_air.end_row();
+    part.open_air = empty_mask(geometry.size);
   }
   control.step("part", 1);
   return part;
