@@ -4,7 +4,7 @@
 #include <array>
 #include <cmath>
 #include <cstdint>
-#include <cstdlib>
+#include <cstring>
 #include <map>
 #include <numbers>
 #include <utility>
@@ -19,12 +19,44 @@ constexpr int grid_splits = 3;
 // Axes of the grid from which the search goes on: the best one may lie beside the highest of several peaks.
 constexpr std::size_t starts = 3;
 constexpr double first_turn = 0.07, last_turn = 0.002;  // radians: half a grid cell down to 0.1 degrees
-constexpr int turns_across = 36;                        // directions tried across the length, 5 degrees apart
+constexpr std::size_t turns_across = 32;  // directions tried across the length, 5.6 degrees apart
+
+// Axes are tried eight at a time: their running extremes then stay in registers.
+constexpr std::size_t batch = 8;
+struct Batch {
+  std::array<float, batch> x{}, y{}, z{};
+  void set(std::size_t i, const Vec3& axis) {
+    x[i] = static_cast<float>(axis[0]);
+    y[i] = static_cast<float>(axis[1]);
+    z[i] = static_cast<float>(axis[2]);
+  }
+};
 
 struct Grid {
   std::vector<Vec3> axes;
-  std::vector<float> x, y, z;  // the same, for the vectorised scan
+  std::vector<Batch> batches;  // the same; the last one is filled up with axes of length 0
 };
+
+// GCC's and Clang's vector type: one register, or two where the machine has none so wide.
+typedef float Eight __attribute__((vector_size(batch * sizeof(float))));
+
+// Calipers of the points x, y, z along eight axes. Elementwise, so that every clone gives the same bits.
+__attribute__((target_clones("avx2", "default"))) void batch_calipers(const float* x, const float* y,
+                                                                      const float* z, std::size_t count,
+                                                                      const Batch& axes, float* out) {
+  Eight ax, ay, az;
+  std::memcpy(&ax, axes.x.data(), sizeof ax);
+  std::memcpy(&ay, axes.y.data(), sizeof ay);
+  std::memcpy(&az, axes.z.data(), sizeof az);
+  Eight low = x[0] * ax + y[0] * ay + z[0] * az, high = low;
+  for (std::size_t p = 1; p < count; ++p) {
+    const Eight t = x[p] * ax + y[p] * ay + z[p] * az;
+    low = t < low ? t : low;
+    high = t > high ? t : high;
+  }
+  const Eight calipers = high - low;
+  std::memcpy(out, &calipers, sizeof calipers);
+}
 
 Vec3 unit(const Vec3& v) { return (1 / length(v)) * v; }
 
@@ -40,8 +72,7 @@ Grid make_grid() {
     }
   }
   std::vector<std::array<std::size_t, 3>> triangles;
-  const double edge = length(points[0] - points[6]);
-  double nearest = edge;
+  double nearest = 2;
   for (std::size_t i = 1; i < points.size(); ++i) nearest = std::min(nearest, length(points[0] - points[i]));
   const auto joined = [&](std::size_t i, std::size_t j) {
     return length(points[i] - points[j]) < 1.1 * nearest;
@@ -72,10 +103,9 @@ Grid make_grid() {
   for (const Vec3& p : points) {
     const double first = std::abs(p[2]) > zero ? p[2] : std::abs(p[1]) > zero ? p[1] : p[0];
     if (first < 0) continue;
+    if (grid.axes.size() % batch == 0) grid.batches.emplace_back();
+    grid.batches.back().set(grid.axes.size() % batch, p);
     grid.axes.push_back(p);
-    grid.x.push_back(static_cast<float>(p[0]));
-    grid.y.push_back(static_cast<float>(p[1]));
-    grid.z.push_back(static_cast<float>(p[2]));
   }
   return grid;
 }
@@ -87,25 +117,29 @@ const Grid& grid() {
 
 class Hull {
  public:
-  explicit Hull(std::span<const Vec3> points) : points_(points) {}
-
-  // Caliper of every axis of the grid.
-  std::vector<float> scan() const {
-    const Grid& g = grid();
-    const std::size_t n = g.axes.size();
-    std::vector<float> low(n, 1e30F), high(n, -1e30F);
-    for (const Vec3& p : points_) {
-      const Vec3 from_first = p - points_[0];
-      const float x = static_cast<float>(from_first[0]), y = static_cast<float>(from_first[1]),
-                  z = static_cast<float>(from_first[2]);
-      for (std::size_t i = 0; i < n; ++i) {
-        const float t = x * g.x[i] + y * g.y[i] + z * g.z[i];
-        low[i] = t < low[i] ? t : low[i];
-        high[i] = t > high[i] ? t : high[i];
-      }
+  explicit Hull(std::span<const Vec3> points) : points_(points) {
+    for (const Vec3& p : points) {
+      const Vec3 from_first = p - points[0];
+      x_.push_back(static_cast<float>(from_first[0]));
+      y_.push_back(static_cast<float>(from_first[1]));
+      z_.push_back(static_cast<float>(from_first[2]));
     }
-    for (std::size_t i = 0; i < n; ++i) high[i] -= low[i];
-    return high;
+  }
+
+  std::array<float, batch> calipers(const Batch& axes) const {
+    std::array<float, batch> out;
+    batch_calipers(x_.data(), y_.data(), z_.data(), x_.size(), axes, out.data());
+    return out;
+  }
+  // Of every axis of the grid.
+  std::vector<float> grid_calipers() const {
+    std::vector<float> all;
+    for (const Batch& axes : grid().batches) {
+      const auto some = calipers(axes);
+      all.insert(all.end(), some.begin(), some.end());
+    }
+    all.resize(grid().axes.size());
+    return all;
   }
 
   double caliper(const Vec3& axis) const {
@@ -132,7 +166,15 @@ class Hull {
 
  private:
   std::span<const Vec3> points_;
+  std::vector<float> x_, y_, z_;  // from the first point
 };
+
+// Two unit vectors across a unit vector and across each other.
+std::pair<Vec3, Vec3> across(const Vec3& axis) {
+  const Vec3 helper = std::abs(axis[0]) < 0.7 ? Vec3{1, 0, 0} : Vec3{0, 1, 0};
+  const Vec3 u = unit(cross(axis, helper));
+  return {u, cross(axis, u)};
+}
 
 // The `starts` axes with the largest value.
 std::vector<Vec3> best_axes(std::vector<float> value) {
@@ -160,41 +202,49 @@ Vec3 lengthened(const Hull& hull, Vec3 axis) {
 
 // Turns the axis to a least caliper by a search with halving steps.
 Vec3 thinned(const Hull& hull, Vec3 axis) {
-  double value = hull.caliper(axis);
+  float value = static_cast<float>(hull.caliper(axis));
   for (double turn = first_turn; turn > last_turn;) {
-    const Vec3 helper = std::abs(axis[0]) < 0.7 ? Vec3{1, 0, 0} : Vec3{0, 1, 0};
-    const Vec3 u = unit(cross(axis, helper)), v = cross(axis, u);
-    Vec3 best = axis;
-    for (int k = 0; k < 8; ++k) {
-      const double angle = k * std::numbers::pi / 4;
-      const Vec3 next = unit(axis + turn * (std::cos(angle) * u + std::sin(angle) * v));
-      const double there = hull.caliper(next);
-      if (there < value) {
-        value = there;
-        best = next;
-      }
+    const auto [u, v] = across(axis);
+    std::array<Vec3, batch> next;
+    Batch axes;
+    for (std::size_t k = 0; k < batch; ++k) {
+      const double angle = static_cast<double>(k) * 2 * std::numbers::pi / batch;
+      next[k] = unit(axis + turn * (std::cos(angle) * u + std::sin(angle) * v));
+      axes.set(k, next[k]);
     }
-    if (best == axis) turn /= 2;
-    axis = best;
+    const auto there = hull.calipers(axes);
+    const auto best = std::min_element(there.begin(), there.end());
+    if (*best < value) {
+      value = *best;
+      axis = next[static_cast<std::size_t>(best - there.begin())];
+    } else {
+      turn /= 2;
+    }
   }
   return axis;
 }
 
 // The largest caliper across `along`: a coarse turn, then the fixed point in the plane across.
 Vec3 widest_across(const Hull& hull, const Vec3& along) {
-  const Vec3 helper = std::abs(along[0]) < 0.7 ? Vec3{1, 0, 0} : Vec3{0, 1, 0};
-  const Vec3 u = unit(cross(along, helper)), v = cross(along, u);
+  const auto [u, v] = across(along);
   Vec3 axis = u;
-  double value = 0;
-  for (int k = 0; k < turns_across; ++k) {
-    const double angle = k * std::numbers::pi / turns_across;
-    const Vec3 next = std::cos(angle) * u + std::sin(angle) * v;
-    const double there = hull.caliper(next);
-    if (there > value) {
-      value = there;
-      axis = next;
+  float most = 0;
+  for (std::size_t first = 0; first < turns_across; first += batch) {
+    std::array<Vec3, batch> next;
+    Batch axes;
+    for (std::size_t k = 0; k < batch; ++k) {
+      const double angle = static_cast<double>(first + k) * std::numbers::pi / turns_across;
+      next[k] = std::cos(angle) * u + std::sin(angle) * v;
+      axes.set(k, next[k]);
+    }
+    const auto there = hull.calipers(axes);
+    const auto best = std::max_element(there.begin(), there.end());
+    if (*best > most) {
+      most = *best;
+      axis = next[static_cast<std::size_t>(best - there.begin())];
     }
   }
+  double value = hull.caliper(axis);
   for (;;) {
     const Vec3 span = hull.span(axis);
     const Vec3 next = unit(span - dot(span, along) * along);
@@ -209,7 +259,7 @@ Vec3 widest_across(const Hull& hull, const Vec3& along) {
 
 Calipers measure_calipers(std::span<const Vec3> points) {
   const Hull hull(points);
-  std::vector<float> scan = hull.scan();
+  std::vector<float> scan = hull.grid_calipers();
   Calipers c;
   for (const Vec3& start : best_axes(scan)) {
     const Vec3 axis = lengthened(hull, start);

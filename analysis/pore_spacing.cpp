@@ -12,15 +12,16 @@ namespace halfmark {
 
 namespace {
 
-constexpr std::int64_t slab_planes = 16;
-
-std::vector<LabelledRun> neighbour_runs(const SegmentedPores& found, const PoreRuns& runs) {
-  std::vector<LabelledRun> out;
-  for (const Pore& pore : found.pores) {
-    if (!counts_as_neighbour(pore.kind)) continue;
-    for (const VoxelRun& r : runs.of(pore.id)) out.push_back({r, pore.id});
-  }
-  return out;
+RunGrid neighbour_grid(const SegmentedPores& found, const VolumeGeometry& geometry) {
+  return RunGrid(geometry.size, geometry.spacing_mm, [&](std::int64_t z, std::vector<LabelledRun>& out) {
+    for (std::int64_t y = 0; y < geometry.size[1]; ++y) {
+      for (const LabelRun& r : found.field.labels.row(y, z)) {
+        if (!counts_as_neighbour(found.pores[static_cast<std::size_t>(r.label) - 1].kind)) continue;
+        out.push_back(
+            {{r.begin, r.end, static_cast<std::int32_t>(y), static_cast<std::int32_t>(z)}, r.label});
+      }
+    }
+  });
 }
 
 void add_run(std::vector<LabelledRun>& out, std::int32_t begin, std::int32_t end, std::int64_t y,
@@ -45,30 +46,21 @@ void add_difference(std::span<const Run> other, std::span<const Run> row, std::i
 
 // The outside voxels that share a face with the inside: the nearest outside voxel of any inside voxel is one
 // of them. Some may be listed twice.
-std::vector<LabelledRun> outer_border(const RunMask& inside) {
+RunGrid outer_border(const RunMask& inside, const Vec3& spacing_mm) {
   const auto& size = inside.size();
-  const std::int64_t slabs = (size[2] + slab_planes - 1) / slab_planes;
-  std::vector<std::vector<LabelledRun>> parts(static_cast<std::size_t>(slabs));
-  tbb::parallel_for(std::int64_t{0}, slabs, [&](std::int64_t slab) {
-    auto& out = parts[static_cast<std::size_t>(slab)];
-    const std::int64_t end = std::min((slab + 1) * slab_planes, size[2]);
-    for (std::int64_t z = slab * slab_planes; z < end; ++z) {
-      for (std::int64_t y = 0; y < size[1]; ++y) {
-        const auto row = inside.row(y, z);
-        for (const Run& r : row) {
-          if (r.begin > 0) add_run(out, r.begin - 1, r.begin, y, z);
-          if (r.end < size[0]) add_run(out, r.end, r.end + 1, y, z);
-        }
-        if (y > 0) add_difference(inside.row(y - 1, z), row, y, z, out);
-        if (y + 1 < size[1]) add_difference(inside.row(y + 1, z), row, y, z, out);
-        if (z > 0) add_difference(inside.row(y, z - 1), row, y, z, out);
-        if (z + 1 < size[2]) add_difference(inside.row(y, z + 1), row, y, z, out);
+  return RunGrid(size, spacing_mm, [&](std::int64_t z, std::vector<LabelledRun>& out) {
+    for (std::int64_t y = 0; y < size[1]; ++y) {
+      const auto row = inside.row(y, z);
+      for (const Run& r : row) {
+        if (r.begin > 0) add_run(out, r.begin - 1, r.begin, y, z);
+        if (r.end < size[0]) add_run(out, r.end, r.end + 1, y, z);
       }
+      if (y > 0) add_difference(inside.row(y - 1, z), row, y, z, out);
+      if (y + 1 < size[1]) add_difference(inside.row(y + 1, z), row, y, z, out);
+      if (z > 0) add_difference(inside.row(y, z - 1), row, y, z, out);
+      if (z + 1 < size[2]) add_difference(inside.row(y, z + 1), row, y, z, out);
     }
   });
-  std::vector<LabelledRun> all;
-  for (const auto& part : parts) all.insert(all.end(), part.begin(), part.end());
-  return all;
 }
 
 template <class F>
@@ -88,7 +80,7 @@ bool counts_as_neighbour(PoreKind kind) { return kind != PoreKind::inclusion && 
 void measure_spacing(SegmentedPores& found, const VolumeGeometry& geometry,
                      const std::vector<double>& surface_shift_mm, const RunControl& control) {
   const PoreRuns runs(found.field.labels, static_cast<std::int32_t>(found.pores.size()));
-  const RunGrid grid(neighbour_runs(found, runs), geometry.size, geometry.spacing_mm);
+  const RunGrid grid = neighbour_grid(found, geometry);
   for_each_pore(found.pores, control, [&](Pore& pore) {
     pore.spacing_mm = not_measured;
     pore.nearest_id = 0;
@@ -106,7 +98,7 @@ void measure_depth(SegmentedPores& found, const VolumeGeometry& geometry, const 
   for (Pore& pore : found.pores) pore.depth_mm = part.has_outside && pore.open ? 0 : not_measured;
   if (!part.has_outside) return;
   const PoreRuns runs(found.field.labels, static_cast<std::int32_t>(found.pores.size()));
-  const RunGrid grid(outer_border(part.inside), geometry.size, geometry.spacing_mm);
+  const RunGrid grid = outer_border(part.inside, geometry.spacing_mm);
   for_each_pore(found.pores, control, [&](Pore& pore) {
     if (pore.open || runs.of(pore.id).empty()) return;
     const RunGrid::Nearest nearest = grid.nearest(runs.of(pore.id), 0);
@@ -118,7 +110,7 @@ void measure_depth(SegmentedPores& found, const VolumeGeometry& geometry, const 
 std::vector<PoreGap> gaps_between_pores(const SegmentedPores& found, const VolumeGeometry& geometry,
                                         const std::vector<double>& reach_mm, const RunControl& control) {
   const PoreRuns runs(found.field.labels, static_cast<std::int32_t>(found.pores.size()));
-  const RunGrid grid(neighbour_runs(found, runs), geometry.size, geometry.spacing_mm);
+  const RunGrid grid = neighbour_grid(found, geometry);
   std::vector<double> shift(found.pores.size());
   double widest = 0;
   for (const Pore& pore : found.pores) {

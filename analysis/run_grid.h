@@ -4,6 +4,7 @@
 
 #include <array>
 #include <cstdint>
+#include <functional>
 #include <limits>
 #include <span>
 #include <vector>
@@ -22,12 +23,13 @@ struct LabelledRun {
 // each end, where a voxel reaches from its centre as an octahedron does to its faces (half a voxel along an
 // axis, less in between), for a voxel at a border lies half outside on average.
 double voxel_gap_mm(const Vec3& apart_mm, const Vec3& spacing_mm);
-// The same between the nearest voxels of two runs; 0 where they share a voxel or touch.
-double run_gap_mm(const VoxelRun& a, const VoxelRun& b, const Vec3& spacing_mm);
 
 class RunGrid {
  public:
-  RunGrid(std::span<const LabelledRun> runs, const std::array<std::int64_t, 3>& size, const Vec3& spacing_mm);
+  // Appends the runs of plane z; called from several threads.
+  using PlaneRuns = std::function<void(std::int64_t z, std::vector<LabelledRun>& out)>;
+
+  RunGrid(const std::array<std::int64_t, 3>& size, const Vec3& spacing_mm, const PlaneRuns& plane_runs);
 
   struct Nearest {
     double gap_mm = std::numeric_limits<double>::infinity();
@@ -45,11 +47,21 @@ class RunGrid {
   template <class Visit>
   void search(std::span<const VoxelRun> of, std::int32_t own, const double& reach_mm, Visit visit) const;
 
+  // A run inside its block.
+  struct PackedRun {
+    std::uint8_t first = 0, last = 0, y = 0, z = 0;  // voxels from the block's corner
+    std::int32_t label = 0;
+  };
+  struct Layer {                       // the blocks of one z
+    std::vector<std::uint32_t> start;  // first run of each block, x fastest; one more at the end
+    std::vector<PackedRun> runs;
+  };
+  void fill_layer(std::int64_t layer, const std::vector<LabelledRun>& runs);
+
   Vec3 spacing_;
-  std::int64_t edge_ = 16;  // of a block, voxels
+  std::int64_t edge_ = 16;  // of a block, voxels; at most 256
   std::array<std::int64_t, 3> blocks_{};
-  std::vector<std::size_t> start_;  // first run of each block; one more at the end
-  std::vector<LabelledRun> runs_;
+  std::vector<Layer> layers_;
 };
 
 }  // namespace halfmark
