@@ -23,8 +23,8 @@ constexpr int most_decimals = 12;
 std::string fixed_text(double value, int decimals) {
   if (!std::isfinite(value)) return "–";
   std::array<char, 400> buffer;  // the largest double has 309 digits before the point
-  const auto end = std::to_chars(buffer.data(), buffer.data() + buffer.size(), value, std::chars_format::fixed,
-                                 std::clamp(decimals, 0, most_decimals));
+  const auto end = std::to_chars(buffer.data(), buffer.data() + buffer.size(), value,
+                                 std::chars_format::fixed, std::clamp(decimals, 0, most_decimals));
   std::string text(buffer.data(), end.ptr);
   if (text.find_first_not_of("-0.") == std::string::npos && text.front() == '-') text.erase(0, 1);
   return text;
@@ -54,7 +54,8 @@ std::string measured_text(double value, double expanded_uncertainty, const std::
 
 std::string position_text(const double* mm, double voxel_mm) {
   const int decimals = voxel_mm > 0 ? 2 - leading_place(voxel_mm) : 2;
-  return fixed_text(mm[0], decimals) + ", " + fixed_text(mm[1], decimals) + ", " + fixed_text(mm[2], decimals);
+  return fixed_text(mm[0], decimals) + ", " + fixed_text(mm[1], decimals) + ", " +
+         fixed_text(mm[2], decimals);
 }
 
 std::string one_line(const std::string& text) {

@@ -1,6 +1,7 @@
 #include "reports/requirement_text.h"
 
 #include <algorithm>
+#include <cmath>
 #include <limits>
 
 #include "reports/number_text.h"
@@ -47,7 +48,8 @@ std::string quantity_words(const Requirement& r) {
     case Quantity::pore_length:
       return "largest pore length";
     case Quantity::pore_spacing:
-      return r.relative ? "smallest gap between pores, in diameters of the smaller" : "smallest gap between pores";
+      return r.relative ? "smallest gap between pores, in diameters of the smaller"
+                        : "smallest gap between pores";
     case Quantity::pore_nest:
       return "extent of the largest nest of pores";
     case Quantity::pore_depth:
@@ -126,6 +128,18 @@ std::string pore_words(const Inspection& inspection) {
                                              s.porosity_percent.standard_uncertainty,
                                          "%");
   return words;
+}
+
+std::vector<std::string> all_warnings(const Inspection& inspection) {
+  std::vector<std::string> all;
+  const auto add = [&](const std::string& warning) {
+    if (std::find(all.begin(), all.end(), warning) == all.end()) all.push_back(warning);
+  };
+  for (const std::string& w : inspection.grey_levels.warnings) add(one_line(w));
+  for (const RequirementResult& r : inspection.requirements)
+    for (const std::string& w : r.warnings) add(one_line(r.requirement.id + ": " + w));
+  for (const std::string& w : inspection.warnings) add(one_line(w));
+  return all;
 }
 
 std::string part_words(const Inspection& inspection) {

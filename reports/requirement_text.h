@@ -2,6 +2,7 @@
 #pragma once
 
 #include <string>
+#include <vector>
 
 #include "analysis/inspection_result.h"
 
@@ -21,6 +22,8 @@ double margin(const RequirementResult& result);
 std::string margin_words(const RequirementResult& result);
 // "12 pores: 11 closed, 1 open; porosity 0.62 ± 0.05 %"
 std::string pore_words(const Inspection& inspection);
+// Of levels, requirements and inspection, each once, in that order.
+std::vector<std::string> all_warnings(const Inspection& inspection);
 // "bracket, drawing B-1042, revision C"; the spec's title when the part has no name
 std::string part_words(const Inspection& inspection);
 

@@ -12,8 +12,8 @@ namespace {
 
 // Characters, not bytes: continuation bytes of UTF-8 take no column.
 std::size_t columns(const std::string& text) {
-  return static_cast<std::size_t>(
-      std::count_if(text.begin(), text.end(), [](char c) { return (static_cast<unsigned char>(c) & 0xc0) != 0x80; }));
+  return static_cast<std::size_t>(std::count_if(
+      text.begin(), text.end(), [](char c) { return (static_cast<unsigned char>(c) & 0xc0) != 0x80; }));
 }
 
 std::string padded(const std::string& text, std::size_t width) {
@@ -45,8 +45,6 @@ void add_requirements(const Inspection& inspection, std::string& text) {
     for (std::size_t i = 0; i + 1 < row.size(); ++i) text += " " + padded(row[i], width[i]) + " ";
     text += " " + row.back() + "\n";
     if (!r.reason.empty()) text += "  " + std::string(width[0], ' ') + "  " + one_line(r.reason) + "\n";
-    for (const std::string& warning : r.warnings)
-      text += "  " + std::string(width[0], ' ') + "  caution: " + one_line(warning) + "\n";
   }
 }
 
@@ -70,11 +68,7 @@ std::string verdict_text(const Inspection& inspection) {
     text += "Smallest pore this scan is expected to show: " +
             number_text(inspection.pore_summary.smallest_expected_diameter_mm, 2) + " mm across\n";
   }
-  add_list("Warnings", inspection.grey_levels.warnings, text);
-  if (!inspection.warnings.empty() && inspection.grey_levels.warnings.empty())
-    add_list("Warnings", inspection.warnings, text);
-  else
-    for (const std::string& line : inspection.warnings) text += "  - " + one_line(line) + "\n";
+  add_list("Warnings", all_warnings(inspection), text);
   return text;
 }
 
