@@ -1,0 +1,28 @@
+// Noise from homogeneous blocks: standard deviation after removal of a linear trend, and correlation at
+// lag 1.
+#pragma once
+
+#include <array>
+
+#include "analysis/field_of_view.h"
+#include "analysis/sample_windows.h"
+
+namespace halfmark {
+
+struct NoiseEstimate {
+  double deviation = 0;                        // grey values
+  std::array<double, 3> correlation{0, 0, 0};  // lag 1 along x, y, z
+  double level = 0;                            // median of the blocks' means, grey values
+  bool large_blocks = false;  // wide blocks well off any edge: `level` is free of partial volume
+  std::int64_t blocks = 0;    // homogeneous blocks used; 0: nothing found
+};
+
+// Blocks whose surroundings lie wholly above `low` and below `high`.
+NoiseEstimate estimate_noise(const VolumeSource& source, const SampleWindows& windows,
+                             const FieldOfView& field, double low, double high);
+
+// A first scale before any level is known: the commonest deviation among small blocks.
+double commonest_deviation(const VolumeSource& source, const SampleWindows& windows,
+                           const FieldOfView& field);
+
+}  // namespace halfmark
