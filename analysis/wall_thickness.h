@@ -32,8 +32,9 @@ struct WallSpot {            // a connected thin place
 
 struct WallSummary {
   bool any_wall = false;
-  Measured least_mm;   // least patch mean
-  double mean_mm = 0;  // area-weighted over walls below the cap
+  Measured least_mm;         // least patch mean
+  Vec3 least_position_mm{};  // the centre of that patch, on the surface
+  double mean_mm = 0;        // area-weighted over walls below the cap
   std::vector<std::pair<double, double>>
       percentiles;              // (percent, mm), area-weighted over all walls: 1, 5, 25, 50, 75, 95
   std::vector<WallSpot> spots;  // thinnest first, at most max_spots
