@@ -107,7 +107,7 @@ T rounded(float value) {
   } else {
     const float low = static_cast<float>(std::numeric_limits<T>::lowest()),
                 high = static_cast<float>(std::numeric_limits<T>::max());
-    return static_cast<T>(std::lround(std::clamp(value, low, high)));
+    return static_cast<T>(std::floor(std::clamp(value, low, high) + 0.5f));
   }
 }
 
@@ -115,7 +115,7 @@ class Scan : public VolumeSource {
  public:
   Scan(std::vector<ScannedBody> bodies, const VolumeGeometry& geometry, const ScanModel& scan)
       : bodies_(std::move(bodies)), geometry_(geometry), scan_(scan) {
-    for (const ScannedBody& body : bodies_) bounds_.push_back(body.body->bounds());
+    for (const ScannedBody& body : bodies_) reach_.push_back(voxel_reach(body.body->bounds(), geometry));
     for (std::size_t a = 0; a < 3; ++a) {
       blur_[a] = gaussian(scan.blur_voxel * geometry.voxel_mm() / geometry.spacing_mm[a], 1);
       correlation_[a] =
@@ -129,9 +129,11 @@ class Scan : public VolumeSource {
   void read_planes(std::int64_t z_begin, std::int64_t z_end, std::byte* out) const override {
     const std::size_t plane =
         static_cast<std::size_t>(geometry_.voxels_per_plane()) * bytes_per_voxel(scan_.type);
-    for (std::int64_t z = z_begin; z < z_end; z += slab_planes) {
+    const std::int64_t slabs = (z_end - z_begin + slab_planes - 1) / slab_planes;
+    tbb::parallel_for(std::int64_t{0}, slabs, [&](std::int64_t s) {
+      const std::int64_t z = z_begin + s * slab_planes;
       render(z, std::min(z + slab_planes, z_end), out + plane * static_cast<std::size_t>(z - z_begin));
-    }
+    });
   }
 
  private:
@@ -181,12 +183,18 @@ class Scan : public VolumeSource {
     Block block{geometry_.size[0], geometry_.size[1], z_end - z_begin + 2 * margin, {}};
     block.values.resize(static_cast<std::size_t>(block.nx * block.ny * block.nz));
     std::vector<float> shares(static_cast<std::size_t>(block.nx));
+    std::vector<std::size_t> near;  // bodies that reach the plane, in their order
     for (std::int64_t z = 0; z < block.nz; ++z) {
       const std::int64_t source_z = std::clamp<std::int64_t>(z_begin - margin + z, 0, geometry_.size[2] - 1);
+      near.clear();
+      for (std::size_t b = 0; b < bodies_.size(); ++b) {
+        if (source_z >= reach_[b].begin[2] && source_z < reach_[b].end[2]) near.push_back(b);
+      }
       for (std::int64_t y = 0; y < block.ny; ++y) {
         std::fill(shares.begin(), shares.end(), 0.0f);
-        for (std::size_t b = 0; b < bodies_.size(); ++b) {
-          cover_row(*bodies_[b].body, bounds_[b], geometry_, y, source_z,
+        for (const std::size_t b : near) {
+          if (y < reach_[b].begin[1] || y >= reach_[b].end[1]) continue;
+          cover_row(*bodies_[b].body, reach_[b], geometry_, y, source_z,
                     static_cast<float>(bodies_[b].grey_share), shares);
         }
         std::copy(shares.begin(), shares.end(), block.row(y, z));
@@ -225,7 +233,7 @@ class Scan : public VolumeSource {
   }
 
   std::vector<ScannedBody> bodies_;
-  std::vector<SolidBounds> bounds_;
+  std::vector<VoxelReach> reach_;
   VolumeGeometry geometry_;
   ScanModel scan_;
   std::array<std::vector<float>, 3> blur_, correlation_;

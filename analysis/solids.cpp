@@ -6,17 +6,13 @@
 #include <numbers>
 #include <utility>
 
+#include "analysis/solid_crowd.h"
+
 namespace halfmark {
 
 namespace {
 
 SolidBounds around(const Vec3& centre, const Vec3& half) { return {centre - half, centre + half}; }
-
-double distance_to(const SolidBounds& b, const Vec3& p) {
-  Vec3 d;
-  for (std::size_t a = 0; a < 3; ++a) d[a] = std::max({b.min_mm[a] - p[a], 0.0, p[a] - b.max_mm[a]});
-  return length(d);
-}
 
 SolidBounds joined(const SolidBounds& a, const SolidBounds& b) {
   SolidBounds out;
@@ -158,49 +154,26 @@ class Torus : public Solid {
 
 class United : public Solid {
  public:
-  explicit United(std::vector<SolidPtr> parts) : parts_(std::move(parts)) {
-    for (const auto& part : parts_) part_bounds_.push_back(part->bounds());
-    bounds_ = part_bounds_.at(0);
-    for (const auto& b : part_bounds_) bounds_ = joined(bounds_, b);
-  }
-  double signed_distance_mm(const Vec3& p) const override {
-    double least = 1e300;
-    for (std::size_t i = 0; i < parts_.size(); ++i) {
-      const double to_bounds = distance_to(part_bounds_[i], p);
-      if (to_bounds > 0 && to_bounds >= least) continue;
-      least = std::min(least, parts_[i]->signed_distance_mm(p));
-    }
-    return least;
-  }
-  SolidBounds bounds() const override { return bounds_; }
+  explicit United(std::vector<SolidPtr> parts) : crowd_(std::move(parts)) {}
+  double signed_distance_mm(const Vec3& p) const override { return crowd_.signed_distance_mm(p); }
+  SolidBounds bounds() const override { return crowd_.bounds(); }
 
  private:
-  std::vector<SolidPtr> parts_;
-  std::vector<SolidBounds> part_bounds_;
-  SolidBounds bounds_;
+  SolidCrowd crowd_;
 };
 
 class Subtracted : public Solid {
  public:
   Subtracted(SolidPtr body, std::vector<SolidPtr> removed)
-      : body_(std::move(body)), removed_(std::move(removed)) {
-    for (const auto& part : removed_) removed_bounds_.push_back(part->bounds());
-  }
+      : body_(std::move(body)), removed_(std::move(removed)) {}
   double signed_distance_mm(const Vec3& p) const override {
-    double most = body_->signed_distance_mm(p);
-    for (std::size_t i = 0; i < removed_.size(); ++i) {
-      const double to_bounds = distance_to(removed_bounds_[i], p);
-      if (to_bounds > 0 && -to_bounds <= most) continue;
-      most = std::max(most, -removed_[i]->signed_distance_mm(p));
-    }
-    return most;
+    return std::max(body_->signed_distance_mm(p), -removed_.signed_distance_mm(p));
   }
   SolidBounds bounds() const override { return body_->bounds(); }
 
  private:
   SolidPtr body_;
-  std::vector<SolidPtr> removed_;
-  std::vector<SolidBounds> removed_bounds_;
+  SolidCrowd removed_;
 };
 
 class Intersected : public Solid {

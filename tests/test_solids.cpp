@@ -61,3 +61,28 @@ TEST_CASE("unions and differences are the logic of their parts; turned solids tu
   CHECK(turned->signed_distance_mm({0, 2, 1}) == Approx(-0.5));
   CHECK(turned->bounds().max_mm[1] == Approx(3));
 }
+
+TEST_CASE("a union of many solids equals the least of their distances, near and far") {
+  phantoms::Uniform random(17);
+  std::vector<SolidPtr> parts;
+  for (int i = 0; i < 150; ++i)
+    parts.push_back(sphere({random(0, 30), random(0, 20), random(0, 4)}, random(0.1, 1.2)));
+  const auto crowd = united(parts), rest = subtracted(box({0, 0, 0}, {30, 20, 4}), parts);
+  int near = 0;
+  for (int i = 0; i < 4000; ++i) {
+    const Vec3 p{random(-5, 35), random(-5, 25), random(-4, 8)};
+    double least = 1e300;
+    for (const auto& part : parts) least = std::min(least, part->signed_distance_mm(p));
+    const double d = crowd->signed_distance_mm(p);
+    INFO("at " << p[0] << " " << p[1] << " " << p[2] << ": " << d << ", one by one " << least);
+    CHECK(d <= least + 1e-12);
+    CHECK((d < 0) == (least < 0));
+    if (least < 1.5) {  // within a cell of the surface the distance is exact
+      CHECK(d == Approx(least).margin(1e-12));
+      ++near;
+    }
+    const double in_box = box({0, 0, 0}, {30, 20, 4})->signed_distance_mm(p);
+    CHECK((rest->signed_distance_mm(p) < 0) == (in_box < 0 && least > 0));
+  }
+  CHECK(near > 400);
+}
