@@ -15,6 +15,7 @@
 #include <cmath>
 #include <numeric>
 
+#include "analysis/field_border.h"
 #include "analysis/mask_morphology.h"
 #include "analysis/threshold_mask.h"
 
@@ -38,19 +39,6 @@ struct BodyVoxels {
   std::int32_t label = 0;
 };
 
-// True where a run of row (y, z) reaches the field's border.
-bool reaches_border(const Run& run, std::span<const Run> field_row, std::int64_t y, std::int64_t z,
-                    const RunMask& field) {
-  if (y == 0 || z == 0 || y + 1 == field.size()[1] || z + 1 == field.size()[2]) return true;
-  if (field_row.empty()) return true;
-  if (run.begin <= field_row.front().begin || run.end >= field_row.back().end) return true;
-  const auto covers = [&](std::span<const Run> row) {
-    return !row.empty() && row.front().begin <= run.begin && row.back().end >= run.end;
-  };
-  return !(covers(field.row(y - 1, z)) && covers(field.row(y + 1, z)) && covers(field.row(y, z - 1)) &&
-           covers(field.row(y, z + 1)));
-}
-
 std::vector<BodyVoxels> measure_bodies(const Components& components, const FieldOfView& field) {
   std::vector<BodyVoxels> bodies(static_cast<std::size_t>(components.count));
   const auto& size = components.labels.size();
@@ -65,7 +53,7 @@ std::vector<BodyVoxels> measure_bodies(const Components& components, const Field
           body.min[a] = std::min(body.min[a], first[a]);
           body.max[a] = std::max(body.max[a], last[a]);
         }
-        body.cut = body.cut || reaches_border({run.begin, run.end}, field.rows.row(y, z), y, z, field.rows);
+        body.cut = body.cut || reaches_border({run.begin, run.end}, y, z, field.rows);
       }
     }
   }

@@ -19,7 +19,8 @@ struct SegmentedPores {
   PoreField field;
   // Noise of one voxel of the smoothed deficit and the seed threshold used, as shares of the contrast.
   double smoothed_noise = 0, seed_threshold = 0;
-  double void_grey = 0;  // grey of a fully empty voxel inside pores (their plateau, else air)
+  double kernel_voxel = 0;  // Gaussian width of that smoothing, voxels
+  double void_grey = 0;     // grey of a fully empty voxel inside pores (their plateau, else air)
   std::vector<std::string> warnings;
 };
 

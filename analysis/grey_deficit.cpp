@@ -1,0 +1,262 @@
+#include "analysis/grey_deficit.h"
+
+#include <algorithm>
+#include <cmath>
+#include <type_traits>
+
+#include "analysis/wide_registers.h"
+
+namespace halfmark {
+
+namespace {
+
+// Beyond this many edge widths a face no longer shows: 1 - Phi(3.5) = 0.0002.
+constexpr double band_widths = 3.5;
+// Nearer to the face than this coverage (1.9 edge widths) a dent of the face and a pore cannot be told apart.
+constexpr float least_coverage = 0.97f;
+
+HALFMARK_FOR_WIDE_REGISTERS
+void add_pair(float* out, const float* a, const float* b, float weight, std::int64_t count) {
+  for (std::int64_t x = 0; x < count; ++x) out[x] += weight * (a[x] + b[x]);
+}
+
+HALFMARK_FOR_WIDE_REGISTERS
+void scale_row(float* out, const float* in, float weight, std::int64_t count) {
+  for (std::int64_t x = 0; x < count; ++x) out[x] = weight * in[x];
+}
+
+HALFMARK_FOR_WIDE_REGISTERS
+void deficits_of(float* grey_to_deficit, const float* level, float air, std::int64_t count) {
+  for (std::int64_t x = 0; x < count; ++x)
+    grey_to_deficit[x] = (level[x] - grey_to_deficit[x]) / (level[x] - air);
+}
+
+// Inverse of the normal distribution, good to 0.002 within +-2.5 (Abramowitz & Stegun 26.2.22 is coarser than
+// needed here; a short table is exact enough and quick).
+double normal_quantile(double p) {
+  static const std::vector<double> table = [] {
+    std::vector<double> t;
+    for (int i = 0; i <= 512; ++i) {
+      const double target = std::clamp(i / 512.0, 1e-4, 1 - 1e-4);
+      double low = -5, high = 5;
+      for (int k = 0; k < 60; ++k) {
+        const double middle = 0.5 * (low + high);
+        (0.5 * std::erfc(-middle * M_SQRT1_2) < target ? low : high) = middle;
+      }
+      t.push_back(0.5 * (low + high));
+    }
+    return t;
+  }();
+  const double at = std::clamp(p, 0.0, 1.0) * 512;
+  const auto i = static_cast<std::size_t>(std::min(at, 511.0));
+  return table[i] + (at - static_cast<double>(i)) * (table[i + 1] - table[i]);
+}
+
+}  // namespace
+
+std::vector<float> half_gaussian(double sigma, double reach) {
+  const auto last = static_cast<std::int64_t>(std::ceil(reach * sigma));
+  std::vector<double> weights;
+  double sum = 0;
+  for (std::int64_t k = 0; k <= last; ++k) {
+    weights.push_back(std::exp(-0.5 * static_cast<double>(k * k) / (sigma * sigma)));
+    sum += k == 0 ? weights.back() : 2 * weights.back();
+  }
+  std::vector<float> out;
+  for (const double w : weights) out.push_back(static_cast<float>(w / sum));
+  return out;
+}
+
+void smooth_block(std::vector<float>& values, const VoxelBox& box,
+                  const std::array<std::vector<float>, 3>& kernel, std::vector<float>& line) {
+  const std::int64_t nx = box.extent(0), ny = box.extent(1), nz = box.extent(2);
+  // Along x: each row through a padded copy.
+  const auto rx = static_cast<std::int64_t>(kernel[0].size()) - 1;
+  line.resize(static_cast<std::size_t>(std::max({nx + 2 * rx, nx * ny, nx * nz})));
+  for (std::int64_t r = 0; r < ny * nz; ++r) {
+    float* row = values.data() + r * nx;
+    std::copy(row, row + nx, line.data() + rx);
+    std::fill(line.data(), line.data() + rx, row[0]);
+    std::fill(line.data() + rx + nx, line.data() + nx + 2 * rx, row[nx - 1]);
+    scale_row(row, line.data() + rx, kernel[0][0], nx);
+    for (std::int64_t k = 1; k <= rx; ++k)
+      add_pair(row, line.data() + rx - k, line.data() + rx + k, kernel[0][static_cast<std::size_t>(k)], nx);
+  }
+  // Along y, then z: whole rows at a time, the source rows kept aside.
+  for (const std::size_t axis : {std::size_t{1}, std::size_t{2}}) {
+    const auto reach = static_cast<std::int64_t>(kernel[axis].size()) - 1;
+    const std::int64_t count = axis == 1 ? ny : nz, lines = axis == 1 ? nz : ny;
+    const std::int64_t stride = axis == 1 ? nx : nx * ny, next = axis == 1 ? nx * ny : nx;
+    for (std::int64_t l = 0; l < lines; ++l) {
+      float* first = values.data() + l * next;
+      for (std::int64_t i = 0; i < count; ++i) std::copy_n(first + i * stride, nx, line.data() + i * nx);
+      for (std::int64_t i = 0; i < count; ++i) {
+        float* row = first + i * stride;
+        scale_row(row, line.data() + i * nx, kernel[axis][0], nx);
+        for (std::int64_t k = 1; k <= reach; ++k) {
+          add_pair(row, line.data() + std::max<std::int64_t>(i - k, 0) * nx,
+                   line.data() + std::min(i + k, count - 1) * nx, kernel[axis][static_cast<std::size_t>(k)],
+                   nx);
+        }
+      }
+    }
+  }
+}
+
+GreyDeficit::GreyDeficit(const VolumeSource& source, const FieldOfView& field, const GreyLevels& levels,
+                         const PartMap& part, const MaterialLevel& level)
+    : source_(source), field_(field), levels_(levels), part_(part), level_(level) {
+  const VolumeGeometry& geometry = source.geometry();
+  edge_width_ = std::sqrt(levels.blur_voxel * levels.blur_voxel + 1.0 / 12);
+  for (std::size_t a = 0; a < 3; ++a) {
+    const double scale = geometry.voxel_mm() / geometry.spacing_mm[a];
+    kernel_[a] = half_gaussian(std::max(0.3, levels.blur_voxel * scale), band_widths);
+    band_[a] = static_cast<std::int64_t>(kernel_[a].size());
+  }
+}
+
+namespace {
+
+enum class Content { none, all, some };
+
+Content content_of(const RunMask& mask, const VoxelBox& box) {
+  const auto& size = mask.size();
+  bool any = false, missing = false;
+  const auto clamp = [&](std::int64_t v, std::size_t a) { return std::clamp<std::int64_t>(v, 0, size[a]); };
+  const std::int64_t x0 = clamp(box.begin[0], 0), x1 = clamp(box.end[0], 0);
+  if (x0 >= x1) return Content::none;
+  for (std::int64_t z = clamp(box.begin[2], 2); z < clamp(box.end[2], 2); ++z) {
+    for (std::int64_t y = clamp(box.begin[1], 1); y < clamp(box.end[1], 1); ++y) {
+      const auto row = mask.row(y, z);
+      const auto run = std::upper_bound(row.begin(), row.end(), x0,
+                                        [](std::int64_t x, const Run& r) { return x < r.end; });
+      const bool hit = run != row.end() && run->begin < x1;
+      any = any || hit;
+      missing = missing || !(hit && run->begin <= x0 && run->end >= x1);
+      if (any && missing) return Content::some;
+    }
+  }
+  return any ? Content::all : Content::none;
+}
+
+}  // namespace
+
+bool GreyDeficit::fill(const VoxelBox& box, const GreyPlanes& planes, DeficitBlock& block) const {
+  if (content_of(part_.inside, box) == Content::none) return false;
+  block.box = box;
+  block.deep = content_of(part_.inside, box.grown(band_)) == Content::all;
+  visit_voxel_type(source_.voxel_type(),
+                   [&](auto* type) { fill_typed<std::remove_pointer_t<decltype(type)>>(planes, block); });
+  return true;
+}
+
+// The share of each voxel that lies inside: 1 and 0 by the mask, sub-voxel at its border from the edge's grey
+// value.
+template <class T>
+void GreyDeficit::cover_border(const GreyPlanes& planes, const VoxelBox& box,
+                               std::vector<float>& coverage) const {
+  const auto& size = source_.geometry().size;
+  const std::int64_t nx = box.extent(0), ny = box.extent(1), nz = box.extent(2);
+  coverage.assign(static_cast<std::size_t>(nx * ny * nz), 0);
+  const auto clamped = [&](std::int64_t v, std::size_t a) {
+    return std::clamp<std::int64_t>(v, 0, size[a] - 1);
+  };
+  for (std::int64_t z = 0; z < nz; ++z) {
+    for (std::int64_t y = 0; y < ny; ++y) {
+      const std::int64_t sy = clamped(box.begin[1] + y, 1), sz = clamped(box.begin[2] + z, 2);
+      float* row = coverage.data() + (z * ny + y) * nx;
+      for (const Run& run : part_.inside.row(sy, sz)) {
+        const std::int64_t begin =
+            run.begin == 0 ? 0 : std::clamp<std::int64_t>(run.begin - box.begin[0], 0, nx);
+        const std::int64_t end =
+            run.end == size[0] ? nx : std::clamp<std::int64_t>(run.end - box.begin[0], 0, nx);
+        for (std::int64_t x = begin; x < end; ++x) row[x] = 1;
+      }
+    }
+  }
+  // Border voxels: a flag differs from a 6-neighbour's. Their grey value tells how far the face is.
+  const std::vector<float> flags = coverage;
+  const T* greys = reinterpret_cast<const T*>(planes.voxels);
+  const double contrast = levels_.contrast();
+  for (std::int64_t z = 1; z + 1 < nz; ++z) {
+    for (std::int64_t y = 1; y + 1 < ny; ++y) {
+      const std::int64_t gy = box.begin[1] + y, gz = box.begin[2] + z;
+      if (gy < 0 || gz < planes.z_begin || gy >= size[1] || gz >= planes.z_end) continue;
+      for (std::int64_t x = 1; x + 1 < nx; ++x) {
+        const std::int64_t i = (z * ny + y) * nx + x, gx = box.begin[0] + x;
+        const float f = flags[static_cast<std::size_t>(i)];
+        const auto differs = [&](std::int64_t d) { return flags[static_cast<std::size_t>(i + d)] != f; };
+        if (!(differs(1) || differs(-1) || differs(nx) || differs(-nx) || differs(nx * ny) ||
+              differs(-nx * ny)))
+          continue;
+        if (gx < 0 || gx >= size[0]) continue;
+        const double grey = static_cast<double>(greys[((gz - planes.z_begin) * size[1] + gy) * size[0] + gx]);
+        // A border voxel whose grey contradicts its flag belongs to a mouth or to rough ground: the mask
+        // decides.
+        if ((grey >= levels_.threshold) != (f > 0.5f)) continue;
+        const double depth = edge_width_ * normal_quantile((grey - levels_.air) / contrast);
+        coverage[static_cast<std::size_t>(i)] = static_cast<float>(std::clamp(0.5 + depth, 0.0, 1.0));
+      }
+    }
+  }
+}
+
+template <class T>
+void GreyDeficit::fill_typed(const GreyPlanes& planes, DeficitBlock& block) const {
+  const VoxelBox& box = block.box;
+  const auto& size = source_.geometry().size;
+  const std::int64_t nx = box.extent(0), ny = box.extent(1), nz = box.extent(2);
+  block.deficit.resize(static_cast<std::size_t>(box.voxels()));
+  block.usable.resize(static_cast<std::size_t>(box.voxels()));
+  const float* coverage = nullptr;
+  VoxelBox wide = box;
+  if (!block.deep) {
+    wide = box.grown(band_);
+    cover_border<T>(planes, wide, block.coverage);
+    smooth_block(block.coverage, wide, kernel_, block.line);
+    coverage = block.coverage.data();
+  }
+  std::vector<float> level(static_cast<std::size_t>(nx));
+  const T* greys = reinterpret_cast<const T*>(planes.voxels);
+  const auto air = static_cast<float>(levels_.air), threshold = static_cast<float>(levels_.threshold);
+  const std::int64_t x0 = std::clamp<std::int64_t>(box.begin[0], 0, size[0]),
+                     x1 = std::clamp<std::int64_t>(box.end[0], 0, size[0]);
+  for (std::int64_t z = 0; z < nz; ++z) {
+    const std::int64_t gz = std::clamp<std::int64_t>(box.begin[2] + z, planes.z_begin, planes.z_end - 1);
+    for (std::int64_t y = 0; y < ny; ++y) {
+      const std::int64_t gy = std::clamp<std::int64_t>(box.begin[1] + y, 0, size[1] - 1);
+      float* out = block.deficit.data() + (z * ny + y) * nx;
+      std::uint8_t* usable = block.usable.data() + (z * ny + y) * nx;
+      const T* row = greys + ((gz - planes.z_begin) * size[1] + gy) * size[0];
+      level_.row(gy, gz, x0, x1, level.data() + (x0 - box.begin[0]));
+      for (std::int64_t x = 0; x < x0 - box.begin[0]; ++x)
+        level[static_cast<std::size_t>(x)] = level[static_cast<std::size_t>(x0 - box.begin[0])];
+      for (std::int64_t x = x1 - box.begin[0]; x < nx; ++x)
+        level[static_cast<std::size_t>(x)] = level[static_cast<std::size_t>(x1 - 1 - box.begin[0])];
+      for (std::int64_t x = 0; x < x0 - box.begin[0]; ++x) out[x] = static_cast<float>(row[x0]);
+      for (std::int64_t x = x0; x < x1; ++x) out[x - box.begin[0]] = static_cast<float>(row[x]);
+      for (std::int64_t x = x1 - box.begin[0]; x < nx; ++x) out[x] = static_cast<float>(row[x1 - 1]);
+      if (block.deep) {
+        deficits_of(out, level.data(), air, nx);
+        std::fill(usable, usable + nx, std::uint8_t{1});
+        continue;
+      }
+      const float* p =
+          coverage + ((z + band_[2]) * wide.extent(1) + y + band_[1]) * wide.extent(0) + band_[0];
+      std::fill(usable, usable + nx, std::uint8_t{0});
+      for (const Run& run : part_.inside.row(gy, gz)) {
+        const std::int64_t begin =
+            run.begin == 0 ? 0 : std::clamp<std::int64_t>(run.begin - box.begin[0], 0, nx);
+        const std::int64_t end =
+            run.end == size[0] ? nx : std::clamp<std::int64_t>(run.end - box.begin[0], 0, nx);
+        for (std::int64_t x = begin; x < end; ++x) usable[x] = p[x] >= least_coverage || out[x] < threshold;
+      }
+      for (std::int64_t x = 0; x < nx; ++x) {
+        const float expected = air + p[x] * (level[static_cast<std::size_t>(x)] - air);
+        out[x] = usable[x] != 0 ? (expected - out[x]) / (level[static_cast<std::size_t>(x)] - air) : 0.0f;
+      }
+    }
+  }
+}
+
+}  // namespace halfmark

@@ -1,0 +1,275 @@
+#include "analysis/pore_windows.h"
+
+#include <tbb/enumerable_thread_specific.h>
+
+#include <algorithm>
+#include <cmath>
+#include <limits>
+
+#include "analysis/block_pass.h"
+
+namespace halfmark {
+
+void PoreSums::add(const PoreSums& o) {
+  window_voxels += o.window_voxels;
+  window += o.window;
+  ring_voxels += o.ring_voxels;
+  ring += o.ring;
+  label_voxels += o.label_voxels;
+  label += o.label;
+  for (std::size_t a = 0; a < 3; ++a) moment[a] += o.moment[a];
+  weight += o.weight;
+  core_voxels += o.core_voxels;
+  core += o.core;
+  grey += o.grey;
+}
+
+namespace {
+
+// Squared distances in 1/distance_unit voxel^2 of voxel_mm().
+constexpr double distance_unit = 64;
+constexpr std::int32_t no_distance = std::numeric_limits<std::int32_t>::max();
+
+struct RowOffset {
+  std::int64_t dy, dz;
+  std::int32_t square;
+};
+
+struct Stamp {
+  std::vector<RowOffset> rows;         // within the reach
+  std::vector<std::int32_t> x_square;  // cost of k voxels along x
+  std::array<std::int64_t, 3> reach{};
+  std::int32_t window = 0, ring = 0;  // squared radii
+};
+
+Stamp stamp_of(const VolumeGeometry& geometry, const WindowSizes& sizes) {
+  Stamp out;
+  const double outer = sizes.window_voxel + sizes.ring_voxel;
+  out.window = static_cast<std::int32_t>(sizes.window_voxel * sizes.window_voxel * distance_unit);
+  out.ring = static_cast<std::int32_t>(outer * outer * distance_unit);
+  std::array<double, 3> scale;
+  for (std::size_t a = 0; a < 3; ++a) {
+    scale[a] = geometry.spacing_mm[a] / geometry.voxel_mm();
+    out.reach[a] = static_cast<std::int64_t>(outer / scale[a]);
+  }
+  const auto square = [&](std::int64_t k, std::size_t a) {
+    return static_cast<double>(k * k) * scale[a] * scale[a] * distance_unit;
+  };
+  for (std::int64_t k = 0; k <= out.reach[0]; ++k)
+    out.x_square.push_back(static_cast<std::int32_t>(std::lround(square(k, 0))));
+  for (std::int64_t dz = -out.reach[2]; dz <= out.reach[2]; ++dz) {
+    for (std::int64_t dy = -out.reach[1]; dy <= out.reach[1]; ++dy) {
+      const double s = square(dy, 1) + square(dz, 2);
+      if (s <= out.ring) out.rows.push_back({dy, dz, static_cast<std::int32_t>(std::lround(s))});
+    }
+  }
+  return out;
+}
+
+struct BlockResult {
+  std::vector<std::uint32_t> row_runs;
+  std::vector<LabelRun> runs;
+  std::vector<std::int16_t> fraction;
+  std::vector<std::pair<std::int32_t, PoreSums>> sums;  // by rising label
+};
+
+struct Working {
+  DeficitBlock block;
+  std::vector<std::int32_t> square, nearest;
+  std::vector<PoreSums> sums;       // by slot
+  std::vector<std::int32_t> slots;  // labels met
+};
+
+void lower(Working& w, std::int64_t at, std::int32_t square, std::int32_t label) {
+  auto& s = w.square[static_cast<std::size_t>(at)];
+  auto& n = w.nearest[static_cast<std::size_t>(at)];
+  if (square < s || (square == s && label < n)) {
+    s = square;
+    n = label;
+  }
+}
+
+// Squared distance to the nearest label voxel and its label, for every voxel of the box within reach. True if
+// any.
+bool stamp_labels(const RunLabels& labels, const VoxelBox& box, const Stamp& stamp, Working& w) {
+  const auto& size = labels.size();
+  bool any = false;
+  const std::int64_t nx = box.extent(0), ny = box.extent(1);
+  for (std::int64_t z = std::max<std::int64_t>(0, box.begin[2] - stamp.reach[2]);
+       z < std::min(size[2], box.end[2] + stamp.reach[2]); ++z) {
+    for (std::int64_t y = std::max<std::int64_t>(0, box.begin[1] - stamp.reach[1]);
+         y < std::min(size[1], box.end[1] + stamp.reach[1]); ++y) {
+      for (const LabelRun& run : labels.row(y, z)) {
+        if (run.end + stamp.reach[0] <= box.begin[0] || run.begin - stamp.reach[0] >= box.end[0]) continue;
+        if (!any) {
+          w.square.assign(static_cast<std::size_t>(box.voxels()), no_distance);
+          w.nearest.assign(static_cast<std::size_t>(box.voxels()), 0);
+          any = true;
+        }
+        for (const RowOffset& offset : stamp.rows) {
+          const std::int64_t ty = y + offset.dy, tz = z + offset.dz;
+          if (ty < box.begin[1] || tz < box.begin[2] || ty >= box.end[1] || tz >= box.end[2]) continue;
+          const std::int64_t row = ((tz - box.begin[2]) * ny + (ty - box.begin[1])) * nx - box.begin[0];
+          const std::int64_t b = std::max<std::int64_t>(run.begin, box.begin[0]),
+                             e = std::min<std::int64_t>(run.end, box.end[0]);
+          for (std::int64_t x = b; x < e; ++x) lower(w, row + x, offset.square, run.label);
+          for (std::int64_t k = 1; k <= stamp.reach[0]; ++k) {
+            const std::int32_t square = offset.square + stamp.x_square[static_cast<std::size_t>(k)];
+            if (square > stamp.ring) break;
+            const std::int64_t left = run.begin - k, right = run.end - 1 + k;
+            if (left >= box.begin[0] && left < box.end[0]) lower(w, row + left, square, run.label);
+            if (right >= box.begin[0] && right < box.end[0]) lower(w, row + right, square, run.label);
+          }
+        }
+      }
+    }
+  }
+  return any;
+}
+
+std::int16_t to_fraction(float deficit) {
+  return static_cast<std::int16_t>(
+      std::lround(std::clamp(deficit * static_cast<float>(PoreField::unit), -32000.0f, 32000.0f)));
+}
+
+template <class T>
+void sum_block(const GreyPlanes& planes, const std::array<std::int64_t, 3>& size, const RunMask& core,
+               const VoxelBox& box, const Stamp& stamp, int sign, const std::vector<std::int32_t>& slot_of,
+               Working& w, BlockResult& out) {
+  const T* greys = reinterpret_cast<const T*>(planes.voxels);
+  const std::int64_t nx = box.extent(0), ny = box.extent(1);
+  for (std::int64_t z = box.begin[2]; z < box.end[2]; ++z) {
+    for (std::int64_t y = box.begin[1]; y < box.end[1]; ++y) {
+      const std::int64_t row = ((z - box.begin[2]) * ny + (y - box.begin[1])) * nx - box.begin[0];
+      const T* grey_row = greys + ((z - planes.z_begin) * size[1] + y) * size[0];
+      const std::size_t before = out.runs.size();
+      for (std::int64_t x = box.begin[0]; x < box.end[0]; ++x) {
+        const auto at = static_cast<std::size_t>(row + x);
+        const std::int32_t label = w.nearest[at];
+        if (label == 0 || w.block.usable[at] == 0) continue;
+        PoreSums& sums = w.sums[static_cast<std::size_t>(slot_of[static_cast<std::size_t>(label)])];
+        const std::int16_t fraction = to_fraction(sign > 0 ? w.block.deficit[at] : -w.block.deficit[at]);
+        if (w.square[at] > stamp.window) {
+          ++sums.ring_voxels;
+          sums.ring += fraction;
+          continue;
+        }
+        ++sums.window_voxels;
+        sums.window += fraction;
+        const auto x32 = static_cast<std::int32_t>(x);
+        if (out.runs.size() > before && out.runs.back().end == x32 && out.runs.back().label == label) {
+          ++out.runs.back().end;
+        } else {
+          out.runs.push_back({x32, x32 + 1, label});
+        }
+        out.fraction.push_back(fraction);
+        if (w.square[at] != 0) continue;
+        ++sums.label_voxels;
+        sums.label += fraction;
+        const std::int64_t weight = std::max<std::int64_t>(fraction, 0);
+        sums.weight += weight;
+        sums.moment[0] += weight * x;
+        sums.moment[1] += weight * y;
+        sums.moment[2] += weight * z;
+        sums.grey += static_cast<double>(grey_row[x]);
+      }
+      for (const Run& run : core.row(y, z)) {
+        for (std::int64_t x = std::max<std::int64_t>(run.begin, box.begin[0]);
+             x < std::min<std::int64_t>(run.end, box.end[0]); ++x) {
+          const auto at = static_cast<std::size_t>(row + x);
+          if (w.nearest[at] == 0 || w.block.usable[at] == 0) continue;
+          PoreSums& sums = w.sums[static_cast<std::size_t>(slot_of[static_cast<std::size_t>(w.nearest[at])])];
+          ++sums.core_voxels;
+          sums.core += to_fraction(sign > 0 ? w.block.deficit[at] : -w.block.deficit[at]);
+        }
+      }
+      out.row_runs.push_back(static_cast<std::uint32_t>(out.runs.size() - before));
+    }
+  }
+}
+
+void join_layer(const BlockGrid& grid, std::int64_t layer, const std::vector<BlockResult>& blocks,
+                PoreWindows& out) {
+  std::vector<std::size_t> next_run(blocks.size(), 0), next_value(blocks.size(), 0);
+  const VoxelBox first = grid.box(layer, 0);
+  for (std::int64_t z = first.begin[2]; z < first.end[2]; ++z) {
+    for (std::int64_t y = 0; y < grid.size[1]; ++y) {
+      LabelRun open{0, -1, 0};
+      for (std::int64_t bx = 0; bx < grid.count[0]; ++bx) {
+        const auto b = static_cast<std::size_t>(y / BlockSizes::y * grid.count[0] + bx);
+        const BlockResult& block = blocks[b];
+        if (block.row_runs.empty()) continue;
+        const VoxelBox box = grid.box(layer, static_cast<std::int64_t>(b));
+        const auto row = static_cast<std::size_t>((z - box.begin[2]) * box.extent(1) + (y - box.begin[1]));
+        for (std::uint32_t i = 0; i < block.row_runs[row]; ++i) {
+          const LabelRun run = block.runs[next_run[b]++];
+          const auto length = static_cast<std::ptrdiff_t>(run.end - run.begin);
+          const auto from = block.fraction.begin() + static_cast<std::ptrdiff_t>(next_value[b]);
+          out.fraction.insert(out.fraction.end(), from, from + length);
+          next_value[b] += static_cast<std::size_t>(length);
+          if (open.end == run.begin && open.label == run.label) {
+            open.end = run.end;
+          } else {
+            if (open.end >= 0) out.windows.add_run(open);
+            open = run;
+          }
+        }
+      }
+      if (open.end >= 0) out.windows.add_run(open);
+      out.windows.end_row();
+    }
+  }
+  for (const BlockResult& block : blocks) {
+    for (const auto& [label, sums] : block.sums) out.sums[static_cast<std::size_t>(label)].add(sums);
+  }
+}
+
+}  // namespace
+
+PoreWindows sum_windows(const VolumeSource& source, const GreyDeficit& deficit, const RunLabels& labels,
+                        std::int32_t count, const RunMask& core, const WindowSizes& sizes, int sign,
+                        const RunControl& control) {
+  const VolumeGeometry& geometry = source.geometry();
+  const Stamp stamp = stamp_of(geometry, sizes);
+  const BlockGrid grid(geometry.size);
+  PoreWindows out;
+  out.sums.resize(static_cast<std::size_t>(count) + 1);
+  out.windows = RunLabels(geometry.size);
+  std::vector<BlockResult> results(static_cast<std::size_t>(grid.per_layer()));
+  tbb::enumerable_thread_specific<Working> working;
+  tbb::enumerable_thread_specific<std::vector<std::int32_t>> slot_tables(
+      [&] { return std::vector<std::int32_t>(static_cast<std::size_t>(count) + 1, -1); });
+  for_blocks(
+      source, deficit.reach(), control,
+      [&](std::int64_t, std::int64_t b, const VoxelBox& box, const GreyPlanes& planes) {
+        BlockResult& result = results[static_cast<std::size_t>(b)];
+        result = {};
+        Working& w = working.local();
+        if (!stamp_labels(labels, box, stamp, w) || !deficit.fill(box, planes, w.block)) return;
+        std::vector<std::int32_t>& slot_of = slot_tables.local();
+        w.slots.clear();
+        w.sums.clear();
+        for (const std::int32_t label : w.nearest) {
+          if (label == 0 || slot_of[static_cast<std::size_t>(label)] >= 0) continue;
+          slot_of[static_cast<std::size_t>(label)] = static_cast<std::int32_t>(w.slots.size());
+          w.slots.push_back(label);
+        }
+        w.sums.resize(w.slots.size());
+        visit_voxel_type(source.voxel_type(), [&](auto* type) {
+          sum_block<std::remove_pointer_t<decltype(type)>>(planes, geometry.size, core, box, stamp, sign,
+                                                           slot_of, w, result);
+        });
+        for (std::size_t i = 0; i < w.slots.size(); ++i) {
+          result.sums.emplace_back(w.slots[i], w.sums[i]);
+          slot_of[static_cast<std::size_t>(w.slots[i])] = -1;
+        }
+      },
+      [&](std::int64_t layer) {
+        join_layer(grid, layer, results, out);
+        control.step("pores",
+                     0.6 + 0.4 * static_cast<double>(layer + 1) / static_cast<double>(grid.count[2]));
+      });
+  return out;
+}
+
+}  // namespace halfmark
