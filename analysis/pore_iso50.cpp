@@ -32,12 +32,23 @@ struct Facts {
   bool open = false, cut = false;
 };
 
-bool covers(std::span<const Run> row, std::int32_t begin, std::int32_t end) {
-  return std::any_of(row.begin(), row.end(), [&](const Run& r) { return r.begin <= begin && end <= r.end; });
+// The runs of a row that overlap [begin, end).
+std::span<const Run> overlapping(std::span<const Run> row, std::int32_t begin, std::int32_t end) {
+  const auto first =
+      std::partition_point(row.begin(), row.end(), [&](const Run& r) { return r.end <= begin; });
+  const auto last = std::partition_point(first, row.end(), [&](const Run& r) { return r.begin < end; });
+  return {first, last};
 }
 
-bool overlaps(std::span<const Run> row, std::int32_t begin, std::int32_t end) {
-  return std::any_of(row.begin(), row.end(), [&](const Run& r) { return r.begin < end && begin < r.end; });
+// Voxels of [begin, end) that the row's runs cover.
+std::int64_t covered(std::span<const Run> row, std::int32_t begin, std::int32_t end) {
+  std::int64_t n = 0;
+  for (const Run& r : overlapping(row, begin, end)) n += std::min(r.end, end) - std::max(r.begin, begin);
+  return n;
+}
+
+bool covers(std::span<const Run> row, std::int32_t begin, std::int32_t end) {
+  return covered(row, begin, end) == end - begin;
 }
 
 // True if a voxel of the run has a face neighbour outside the field of view.
@@ -48,13 +59,6 @@ bool at_field_border(const RunMask& field, const LabelRun& run, std::int64_t y, 
   return !covers(field.row(y - 1, z), run.begin, run.end) ||
          !covers(field.row(y + 1, z), run.begin, run.end) ||
          !covers(field.row(y, z - 1), run.begin, run.end) || !covers(field.row(y, z + 1), run.begin, run.end);
-}
-
-// Voxels of [begin, end) that the row's runs cover.
-std::int64_t covered(std::span<const Run> row, std::int32_t begin, std::int32_t end) {
-  std::int64_t n = 0;
-  for (const Run& r : row) n += std::max(0, std::min(r.end, end) - std::max(r.begin, begin));
-  return n;
 }
 
 // Voxels of the run with a face neighbour that is no air: at most what the four neighbouring rows leave open.
@@ -127,7 +131,7 @@ std::vector<Facts> gather_facts(const Components& components, const std::vector<
         f.surface_voxels += surface_voxels(air, run, y, z);
         f.grey_sum += greys[i].sum;
         f.least_grey = std::min(f.least_grey, greys[i].least);
-        f.open = f.open || (knows_open && overlaps(part.open_air.row(y, z), run.begin, run.end));
+        f.open = f.open || (knows_open && !overlapping(part.open_air.row(y, z), run.begin, run.end).empty());
         f.cut = f.cut || at_field_border(field.rows, run, y, z);
         ++i;
       }
