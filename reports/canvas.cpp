@@ -23,7 +23,12 @@ void make_application() {
   static char name[] = "halfmark";
   static char* argv[] = {name, nullptr};
   // Lives as long as the process: fonts and images may be used until its very end.
+  // What Qt has to say about a session it does not find (no run-time folder, no theme) is of no interest
+  // here.
+  const QtMessageHandler previous =
+      qInstallMessageHandler([](QtMsgType, const QMessageLogContext&, const QString&) {});
   new QGuiApplication(argc, argv);
+  qInstallMessageHandler(previous);
   // Qt takes the user's locale for the whole C library; numbers keep their point.
   std::setlocale(LC_NUMERIC, "C");
 }

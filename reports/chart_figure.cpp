@@ -14,6 +14,7 @@ constexpr int chart_width = 1000;
 constexpr double left = 96, right = 28;
 constexpr Rgb bar{0x6b, 0x7c, 0x8a}, grid{0xe4, 0xe8, 0xea};
 constexpr double letter = 17;
+constexpr int least_classes = 10;
 
 struct Plot {
   QRectF area;
@@ -157,10 +158,13 @@ std::vector<SizeClass> size_classes(const std::vector<Pore>& pores) {
       found.emplace_back(class_of(pore.equivalent_diameter_mm), pore.volume_mm3.value);
   if (found.empty()) return {};
   const auto [low, high] = std::minmax_element(found.begin(), found.end());
+  // A few pores of one size make a narrow row: empty classes on both sides keep the picture readable.
+  const int missing = std::max(0, least_classes - (high->first - low->first + 1));
+  const int first = low->first - (missing + 1) / 2, last = high->first + missing / 2;
   std::vector<SizeClass> classes;
-  for (int n = low->first; n <= high->first; ++n) classes.push_back({r10(n), r10(n + 1), 0, 0});
+  for (int n = first; n <= last; ++n) classes.push_back({r10(n), r10(n + 1), 0, 0});
   for (const auto& [n, volume] : found) {
-    SizeClass& c = classes[static_cast<std::size_t>(n - low->first)];
+    SizeClass& c = classes[static_cast<std::size_t>(n - first)];
     ++c.count;
     c.volume_mm3 += volume;
   }

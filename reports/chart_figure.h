@@ -14,7 +14,7 @@ struct SizeClass {
   double volume_mm3 = 0;
 };
 // Pores (not inclusions) by equivalent diameter in ten classes a decade, the steps of the preferred numbers
-// R10 (ISO 3), from the smallest to the largest that occur.
+// R10 (ISO 3), from the smallest to the largest that occur, at least ten.
 std::vector<SizeClass> size_classes(const std::vector<Pore>& pores);
 
 Figure pore_size_figure(const Inspection& inspection);       // empty without pores

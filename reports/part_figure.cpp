@@ -196,8 +196,8 @@ Figure part_figure(const InspectionRun& run, const VolumeGeometry& geometry,
           "The part seen from the front, right and above; pores are solid, deciding places are lettered"};
 }
 
-Figure wall_figure(const InspectionRun& run, const VolumeGeometry&,
-                   const std::vector<EvidencePlace>& places) {
+Figure wall_figure(const InspectionRun& run, const std::vector<EvidencePlace>& places,
+                   const RunControl& control) {
   if (!run.walls || run.outer_surface.triangles.empty() ||
       run.walls->thickness_mm.size() != run.outer_surface.vertices_mm.size())
     return {};
@@ -211,6 +211,7 @@ Figure wall_figure(const InspectionRun& run, const VolumeGeometry&,
   QPainter painter(&image);
   painter.setRenderHint(QPainter::Antialiasing);
   for (int side = 0; side < 2; ++side) {
+    control.throw_if_cancelled();
     const double turn = side == 0 ? azimuth : azimuth + 180;
     const Camera camera = camera_at(box.low, box.high, turn, side == 0 ? elevation : -elevation, wall_width,
                                     wall_height, margin_px);

@@ -14,7 +14,7 @@ namespace halfmark {
 Figure part_figure(const InspectionRun& run, const VolumeGeometry& geometry,
                    const std::vector<EvidencePlace>& places, const RunControl& control = {});
 // Two sides of the part; empty unless walls were measured.
-Figure wall_figure(const InspectionRun& run, const VolumeGeometry& geometry,
-                   const std::vector<EvidencePlace>& places);
+Figure wall_figure(const InspectionRun& run, const std::vector<EvidencePlace>& places,
+                   const RunControl& control = {});
 
 }  // namespace halfmark

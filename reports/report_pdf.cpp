@@ -1,0 +1,252 @@
+#include "reports/report_pdf.h"
+
+#include <QBuffer>
+#include <QPageSize>
+#include <algorithm>
+
+#include "reports/canvas.h"
+#include "reports/number_text.h"
+#include "reports/page_flow.h"
+
+namespace halfmark {
+
+namespace {
+
+const TextStyle body{9.2, false, ink, 1.42}, soft{9.2, false, soft_ink, 1.42};
+const TextStyle small{7.8, false, soft_ink, 1.35}, table_text{8.2, false, ink, 1.35},
+    table_head{7.8, true, soft_ink, 1.3};
+constexpr int resolution = 600;
+constexpr double gap = 12, cell_gap = 7;
+// A picture is no taller than this, so that its words stay on its page.
+constexpr double tallest_picture = 330;
+
+class PdfReport {
+ public:
+  PdfReport(PageFlow& flow, const RunControl& control) : flow_(flow), control_(control) {}
+
+  void head(const ReportContent& c) {
+    const double y = flow_.y();
+    paint_verdict_sign(flow_.painter(), flow_.device(PageFlow::left + 28), flow_.device(y + 32),
+                       flow_.device(54), c.verdict);
+    const double x = PageFlow::left + 74, width = PageFlow::width - 74;
+    flow_.paint_text(x, y, width, c.title, {10, false, soft_ink, 1.3});
+    double at = y + std::max(13.0, flow_.text_height(c.title, {10, false, soft_ink, 1.3}, width));
+    flow_.paint_text(x, at, width, capitalised(to_text(c.verdict)),
+                     {25, true, verdict_line_colour(c.verdict), 1.25});
+    at += 32;
+    flow_.paint_text(x, at, width, c.sentence, {10.5, false, ink, 1.35});
+    at += flow_.text_height(c.sentence, {10.5, false, ink, 1.35}, width);
+    flow_.skip(std::max(70.0, at - y + 6));
+  }
+
+  void section(const Section& s) {
+    control_.throw_if_cancelled();
+    flow_.need(90);
+    flow_.skip(16);
+    flow_.rule(PageFlow::left, PageFlow::left + PageFlow::width, flow_.y(), 1.2, ink);
+    flow_.skip(6);
+    flow_.paragraph(s.heading, {12, true, ink, 1.4});
+    flow_.skip(3);
+    for (const Block& block : s.blocks) std::visit([this](const auto& b) { write(b); }, block);
+  }
+
+ private:
+  void write(const TextBlock& b) {
+    flow_.paragraph(b.text, body);
+    flow_.skip(5);
+  }
+  void write(const ListBlock& b) {
+    for (const std::string& item : b.items) {
+      flow_.need(body.size * body.leading);
+      flow_.paint_text(PageFlow::left, flow_.y(), 10, "•", soft);
+      flow_.paragraph(item, body, 12);
+      flow_.skip(2);
+    }
+    flow_.skip(4);
+  }
+  void write(const FactsBlock& b) {
+    constexpr double name_width = 118;
+    const double value_width = PageFlow::width - name_width;
+    for (const auto& [name, value] : b.facts) {
+      const double height = std::max(flow_.text_height(name, soft, name_width - 8),
+                                     flow_.text_height(value, body, value_width));
+      flow_.need(height);
+      flow_.paint_text(PageFlow::left, flow_.y(), name_width - 8, name, soft);
+      flow_.paint_text(PageFlow::left + name_width, flow_.y(), value_width, value, body);
+      flow_.skip(height + 1.5);
+    }
+    flow_.skip(4);
+  }
+  void write(const TableBlock& b) {
+    header(b);
+    for (const auto& row : b.rows) {
+      const double height = row_height(b, row);
+      if (flow_.y() + height > PageFlow::page_height - PageFlow::bottom) {
+        flow_.need(PageFlow::page_height);
+        header(b);
+      }
+      paint_row(b, row);
+      flow_.skip(height);
+      flow_.rule(PageFlow::left, PageFlow::left + PageFlow::width, flow_.y(), 0.4, rule_grey);
+    }
+    flow_.skip(7);
+  }
+  void header(const TableBlock& b) {
+    double height = 0;
+    for (std::size_t i = 0; i < b.header.size(); ++i)
+      height = std::max(height, flow_.text_height(b.header[i].text, table_head, column_width(b, i)));
+    flow_.need(height + 40);
+    double x = PageFlow::left;
+    for (std::size_t i = 0; i < b.header.size(); ++i) {
+      const double own = flow_.text_height(b.header[i].text, table_head, column_width(b, i));
+      flow_.paint_text(x, flow_.y() + height - own, column_width(b, i), b.header[i].text, table_head,
+                       side(b.header[i]));
+      x += b.shares[i] * PageFlow::width;
+    }
+    flow_.skip(height + 3);
+    flow_.rule(PageFlow::left, PageFlow::left + PageFlow::width, flow_.y(), 0.9, ink);
+    flow_.skip(0.9);
+  }
+  static Qt::Alignment side(const Cell& cell) { return cell.number ? Qt::AlignRight : Qt::AlignLeft; }
+  static double column_width(const TableBlock& b, std::size_t i) {
+    return b.shares[i] * PageFlow::width - (i + 1 < b.shares.size() ? cell_gap : 0);
+  }
+  double row_height(const TableBlock& b, const std::vector<Cell>& row) {
+    double height = 0;
+    for (std::size_t i = 0; i < row.size(); ++i) {
+      double own = flow_.text_height(row[i].text, table_text, column_width(b, i) - (row[i].verdict ? 13 : 0));
+      if (!row[i].note.empty()) own += flow_.text_height(row[i].note, small, column_width(b, i));
+      height = std::max(height, own);
+    }
+    return height + 7;
+  }
+  void paint_row(const TableBlock& b, const std::vector<Cell>& row) {
+    double x = PageFlow::left;
+    const double y = flow_.y() + 3.5;
+    for (std::size_t i = 0; i < row.size(); ++i) {
+      const Cell& cell = row[i];
+      const double width = column_width(b, i);
+      TextStyle style = table_text;
+      if (cell.verdict) {
+        paint_verdict_sign(flow_.painter(), flow_.device(x + 4.5), flow_.device(y + 5.6), flow_.device(9),
+                           *cell.verdict);
+        style.bold = true;
+        flow_.paint_text(x + 13, y, width - 13, cell.text, style);
+      } else {
+        flow_.paint_text(x, y, width, cell.text, style, side(cell));
+        if (!cell.note.empty())
+          flow_.paint_text(x, y + flow_.text_height(cell.text, style, width), width, cell.note, small);
+      }
+      x += b.shares[i] * PageFlow::width;
+    }
+  }
+  void write(const FigureBlock& b) {
+    const double room = PageFlow::width - gap * static_cast<double>(b.figures.size() - 1);
+    double tallest = 0;
+    for (std::size_t i = 0; i < b.figures.size(); ++i)
+      tallest = std::max(tallest, picture_height(b, i, room));
+    const double shrink = std::min(1.0, tallest_picture / tallest);
+    double height = 0;
+    for (std::size_t i = 0; i < b.figures.size(); ++i) {
+      const double width = b.shares[i] * room * shrink;
+      height = std::max(height, picture_height(b, i, room) * shrink + 4 +
+                                    flow_.text_height(b.figures[i].caption, small, width));
+    }
+    flow_.need(height);
+    double x = PageFlow::left;
+    for (std::size_t i = 0; i < b.figures.size(); ++i) {
+      control_.throw_if_cancelled();
+      const double width = b.shares[i] * room * shrink, own = picture_height(b, i, room) * shrink;
+      flow_.image(x, flow_.y(), width, own, image_of(b.figures[i].picture));
+      flow_.paint_text(x, flow_.y() + own + 4, width, b.figures[i].caption, small);
+      x += width + gap;
+    }
+    flow_.skip(height + 10);
+  }
+  static double picture_height(const FigureBlock& b, std::size_t i, double room) {
+    const Picture& p = b.figures[i].picture;
+    return b.shares[i] * room * p.height / p.width;
+  }
+  void write(const SubheadingBlock& b) {
+    flow_.need(70);
+    flow_.skip(7);
+    const double indent = b.verdict ? 15 : 0;
+    if (b.verdict)
+      paint_verdict_sign(flow_.painter(), flow_.device(PageFlow::left + 5), flow_.device(flow_.y() + 7),
+                         flow_.device(10), *b.verdict);
+    flow_.paragraph(b.text, {10, true, ink, 1.4}, indent);
+    flow_.skip(2);
+  }
+  void write(const SignatureBlock& b) {
+    flow_.need(64);
+    flow_.skip(40);
+    const double width = (PageFlow::width - 24 * static_cast<double>(b.lines.size() - 1)) /
+                         static_cast<double>(b.lines.size());
+    double x = PageFlow::left;
+    for (const std::string& line : b.lines) {
+      flow_.rule(x, x + width, flow_.y(), 0.7, ink);
+      flow_.paint_text(x, flow_.y() + 3, width, line, small);
+      x += width + 24;
+    }
+    flow_.skip(20);
+  }
+
+  PageFlow& flow_;
+  const RunControl& control_;
+};
+
+// Text kept to one line of the head.
+std::string shortened(const std::string& text, std::size_t most) {
+  const QString all = qt_text(text);
+  return static_cast<std::size_t>(all.size()) <= most
+             ? text
+             : (all.left(static_cast<int>(most)) + "…").toStdString();
+}
+
+void furniture(PageFlow& flow, int page, int pages, const ReportContent& c) {
+  const double width = PageFlow::width;
+  if (page > 1) {
+    const std::string subject = shortened(c.subject, 70);
+    const std::string serial = c.serial.empty() ? "" : ", serial " + shortened(c.serial, 40);
+    flow.paint_text(PageFlow::left, 32, width - 90, subject + serial, small);
+    paint_verdict_sign(flow.painter(), flow.device(PageFlow::left + width - 58), flow.device(37.5),
+                       flow.device(8), c.verdict);
+    flow.paint_text(PageFlow::left + width - 50, 32, 50, to_text(c.verdict), {7.8, true, ink, 1.35},
+                    Qt::AlignRight);
+    flow.rule(PageFlow::left, PageFlow::left + width, 48, 0.4, rule_grey);
+  }
+  const double y = PageFlow::page_height - 40;
+  flow.paint_text(PageFlow::left, y, width / 2, c.program, small);
+  const std::string number = std::to_string(page) + (pages > 0 ? " of " + std::to_string(pages) : "");
+  flow.paint_text(PageFlow::left + width / 2, y, width / 2, "Page " + number, small, Qt::AlignRight);
+}
+
+// Returns the number of pages.
+int paint(const ReportContent& content, QByteArray& bytes, int pages, const RunControl& control) {
+  QBuffer buffer(&bytes);
+  buffer.open(QIODevice::WriteOnly);
+  QPdfWriter writer(&buffer);
+  writer.setResolution(resolution);
+  writer.setPageSize(QPageSize(QPageSize::A4));
+  writer.setPageMargins(QMarginsF(0, 0, 0, 0));
+  writer.setTitle(qt_text(capitalised(to_text(content.verdict)) + ": " + content.subject));
+  writer.setCreator(qt_text(content.program));
+  PageFlow flow(writer, [&](PageFlow& f, int page) { furniture(f, page, pages, content); });
+  PdfReport report(flow, control);
+  report.head(content);
+  for (const Section& section : content.sections) report.section(section);
+  return flow.pages();
+}
+
+}  // namespace
+
+std::string report_to_pdf(const ReportContent& content, const RunControl& control) {
+  ensure_painting();
+  // Laid out twice: the first time tells how many pages there are.
+  QByteArray first, bytes;
+  const int pages = paint(content, first, 0, control);
+  paint(content, bytes, pages, control);
+  return bytes.toStdString();
+}
+
+}  // namespace halfmark
