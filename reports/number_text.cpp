@@ -49,7 +49,9 @@ RoundedMeasure rounded(double value, double expanded_uncertainty) {
 std::string measured_text(double value, double expanded_uncertainty, const std::string& unit) {
   if (!std::isfinite(value)) return "–";
   const RoundedMeasure r = rounded(value, expanded_uncertainty);
-  return r.value + " ± " + r.uncertainty + (unit.empty() ? "" : " " + unit);
+  // Without an uncertainty the number is a count or a plain fact.
+  const std::string number = r.uncertainty == "0" ? r.value : r.value + " ± " + r.uncertainty;
+  return number + (unit.empty() ? "" : " " + unit);
 }
 
 std::string position_text(const double* mm, double voxel_mm) {

@@ -1,6 +1,7 @@
 #include "reports/pore_mesh.h"
 
 #include <algorithm>
+#include <cmath>
 #include <limits>
 #include <span>
 
@@ -8,8 +9,8 @@ namespace halfmark {
 
 namespace {
 
-// Relaxation: enough to take the steps off, not enough to shrink.
-constexpr int relaxation_rounds = 2;
+// Relaxation: enough to take the steps off. What it takes from the volume is given back by scaling.
+constexpr int relaxation_rounds = 3;
 constexpr float relaxation_share = 0.5f;
 constexpr float cell_half_width = 0.5f;  // a corner stays in its cell
 
@@ -36,7 +37,7 @@ class Nets {
     lower_.swap(upper_);
   }
 
-  std::vector<std::array<float, 3>> corners, cells;
+  std::vector<std::array<float, 3>> corners;        // each in the middle of its cell
   std::vector<std::array<std::uint32_t, 4>> quads;  // seen from the outside counter-clockwise
 
  private:
@@ -53,25 +54,9 @@ class Nets {
         if (count == 0 || count == 8) continue;
         upper_[at(x, y)] = static_cast<std::uint32_t>(corners.size());
         corners.push_back(
-            mean_crossing(in, static_cast<float>(x), static_cast<float>(y), static_cast<float>(z)));
-        cells.push_back(
             {static_cast<float>(x) + 0.5f, static_cast<float>(y) + 0.5f, static_cast<float>(z) + 0.5f});
       }
     }
-  }
-  static std::array<float, 3> mean_crossing(const std::array<std::uint8_t, 8>& in, float x, float y,
-                                            float z) {
-    static constexpr std::array<std::array<std::uint8_t, 2>, 12> edges{
-        {{0, 1}, {2, 3}, {4, 5}, {6, 7}, {0, 2}, {1, 3}, {4, 6}, {5, 7}, {0, 4}, {1, 5}, {2, 6}, {3, 7}}};
-    std::array<float, 3> sum{0, 0, 0};
-    float count = 0;
-    for (const auto& e : edges) {
-      if (in[e[0]] == in[e[1]]) continue;
-      count += 1;
-      for (std::size_t k = 0; k < 3; ++k)
-        sum[k] += 0.5f * static_cast<float>(((e[0] >> k) & 1) + ((e[1] >> k) & 1));
-    }
-    return {x + sum[0] / count, y + sum[1] / count, z + sum[2] / count};
   }
   // a, b, c, d turn counter-clockwise seen from the far end of the voxel edge; `leaving`: the near end is
   // inside.
@@ -86,12 +71,12 @@ class Nets {
                below_[at(x, y)] != 0);
   }
   void join_plane() {  // edges along x and y within the plane below, between the two layers of cells
-    for (std::int64_t y = 1; y < ny_; ++y) {
-      for (std::int64_t x = 1; x < nx_; ++x) {
+    for (std::int64_t y = 0; y < ny_; ++y) {
+      for (std::int64_t x = 0; x < nx_; ++x) {
         const bool here = below_[at(x, y)] != 0;
-        if (x + 1 < nx_ && here != (below_[at(x + 1, y)] != 0))
+        if (y > 0 && x + 1 < nx_ && here != (below_[at(x + 1, y)] != 0))
           quad(lower_[at(x, y - 1)], lower_[at(x, y)], upper_[at(x, y)], upper_[at(x, y - 1)], here);
-        if (y + 1 < ny_ && here != (below_[at(x, y + 1)] != 0))
+        if (x > 0 && y + 1 < ny_ && here != (below_[at(x, y + 1)] != 0))
           quad(lower_[at(x - 1, y)], upper_[at(x - 1, y)], upper_[at(x, y)], lower_[at(x, y)], here);
       }
     }
@@ -103,6 +88,7 @@ class Nets {
 };
 
 void relax(Nets& nets) {
+  const std::vector<std::array<float, 3>> cells = nets.corners;
   std::vector<std::array<float, 4>> sums(nets.corners.size());
   for (int round = 0; round < relaxation_rounds; ++round) {
     std::fill(sums.begin(), sums.end(), std::array<float, 4>{0, 0, 0, 0});
@@ -118,10 +104,30 @@ void relax(Nets& nets) {
       for (std::size_t k = 0; k < 3; ++k) {
         float& c = nets.corners[i][k];
         c += relaxation_share * (sums[i][k] / sums[i][3] - c);
-        c = std::clamp(c, nets.cells[i][k] - cell_half_width, nets.cells[i][k] + cell_half_width);
+        c = std::clamp(c, cells[i][k] - cell_half_width, cells[i][k] + cell_half_width);
       }
     }
   }
+}
+
+// Scales about the mean corner so that the mesh holds as much as its voxels.
+void give_volume_back(Nets& nets, double voxels) {
+  Vec3 centre{0, 0, 0};
+  const auto corner = [&](std::uint32_t i) {
+    return Vec3{nets.corners[i][0], nets.corners[i][1], nets.corners[i][2]};
+  };
+  for (std::uint32_t i = 0; i < nets.corners.size(); ++i) centre = centre + corner(i);
+  centre = 1.0 / static_cast<double>(nets.corners.size()) * centre;
+  double volume = 0;
+  for (const auto& q : nets.quads) {
+    const Vec3 a = corner(q[0]) - centre, b = corner(q[1]) - centre, c = corner(q[2]) - centre,
+               d = corner(q[3]) - centre;
+    volume += (dot(a, cross(b, c)) + dot(a, cross(c, d))) / 6;
+  }
+  if (!(volume > 0)) return;
+  const double scale = std::cbrt(voxels / volume);
+  for (auto& c : nets.corners)
+    for (std::size_t k = 0; k < 3; ++k) c[k] = static_cast<float>(centre[k] + scale * (c[k] - centre[k]));
 }
 
 bool is_mirrored(const VolumeGeometry& g) {
@@ -177,15 +183,18 @@ TriangleMesh PoreMesher::mesh_of(std::int32_t label) const {
   const std::int32_t z0 = from->z, z1 = (to - 1)->z;
   Nets nets(x1 - x0 + 2, y1 - y0 + 3);
   auto next = from;
+  double voxels = 0;
   for (std::int32_t z = z0 - 1; z <= z1; ++z) {
     std::fill(nets.above().begin(), nets.above().end(), std::uint8_t{0});
     for (; next != to && next->z == z + 1; ++next) {
+      voxels += next->x_end - next->x_begin;
       const auto row = nets.above().begin() + std::int64_t{next->y - y0 + 1} * (x1 - x0 + 2);
       std::fill(row + (next->x_begin - x0 + 1), row + (next->x_end - x0 + 1), std::uint8_t{1});
     }
     nets.layer(z - (z0 - 1));
   }
   relax(nets);
+  give_volume_back(nets, voxels);
   return triangles_of(nets, geometry_, {x0 - 1.0, y0 - 1.0, z0 - 1.0});
 }
 

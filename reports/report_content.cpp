@@ -35,7 +35,7 @@ std::string verdict_sentence(const Inspection& in) {
 }
 
 Section part_section(const Inspection& in, const std::string& date) {
-  FactsBlock facts;
+  FactsBlock facts{{}, true};
   const auto add = [&](const char* name, const std::string& value) {
     if (!value.empty()) facts.facts.emplace_back(name, one_line(value));
   };
@@ -56,7 +56,7 @@ Section requirement_section(const Inspection& in, const std::vector<EvidencePlac
   table.header = {
       text_cell("No."),      text_cell("Requirement"), number_cell("Limit"), number_cell("Measured ± U"),
       number_cell("Margin"), text_cell("Place"),       text_cell("Verdict")};
-  table.shares = {0.07, 0.31, 0.15, 0.18, 0.11, 0.06, 0.12};
+  table.shares = {0.06, 0.275, 0.15, 0.18, 0.13, 0.07, 0.135};
   double factor = 2;
   for (std::size_t i = 0; i < in.requirements.size(); ++i) {
     const RequirementResult& r = in.requirements[i];
@@ -106,7 +106,7 @@ std::string pore_facts(const Inspection& in, std::int32_t id) {
 
 Section place_section(const Inspection& in, const ReportFigures& figures) {
   Section section{"Deciding places", {}};
-  if (!figures.part.picture.empty()) section.blocks.push_back(FigureBlock{{figures.part}, {1}});
+  if (!figures.part.picture.empty()) section.blocks.push_back(FigureBlock{{figures.part}, {0.8}});
   if (figures.places.empty()) {
     section.blocks.push_back(TextBlock{"No requirement is decided by a single place."});
     return section;
@@ -157,7 +157,7 @@ TableBlock pore_table(const Inspection& in) {
   table.header = {number_cell("Pore"),       text_cell("Kind"),          text_cell("Shape"),
                   number_cell("x, y, z mm"), number_cell("Diameter mm"), number_cell("Length mm"),
                   number_cell("Volume mm³"), number_cell("Depth mm"),    text_cell("Verdict")};
-  table.shares = {0.06, 0.11, 0.11, 0.19, 0.12, 0.09, 0.12, 0.08, 0.12};
+  table.shares = {0.06, 0.12, 0.1, 0.18, 0.155, 0.08, 0.1, 0.07, 0.135};
   for (const Pore* p : largest_pores(in)) {
     std::string kind = to_text(p->kind);
     std::replace(kind.begin(), kind.end(), '_', ' ');

@@ -26,6 +26,7 @@ struct ListBlock {
 };
 struct FactsBlock {
   std::vector<std::pair<std::string, std::string>> facts;  // name, value
+  bool in_two_columns = false;                             // short facts, read down the left column first
 };
 struct TableBlock {
   std::vector<Cell> header;

@@ -28,12 +28,15 @@ p{margin:.4rem 0 .8rem;max-width:50rem}
 ul{margin:.3rem 0;padding-left:1.2rem;max-width:50rem}
 li{margin:.25rem 0}
 table{border-collapse:collapse;width:100%;font-size:.87rem;line-height:1.4;font-variant-numeric:tabular-nums}
-th{text-align:left;font-weight:600;color:#5b6770;border-bottom:1.5px solid #1d262d;padding:.35rem .6rem .35rem 0;vertical-align:bottom}
-td{border-bottom:1px solid #e0e5e8;padding:.45rem .6rem .45rem 0;vertical-align:top;overflow-wrap:anywhere}
+th{text-align:left;font-weight:600;color:#5b6770;border-bottom:1.5px solid #1d262d;padding:.35rem .9rem .35rem 0;vertical-align:bottom}
+td{border-bottom:1px solid #e0e5e8;padding:.45rem .9rem .45rem 0;vertical-align:top;overflow-wrap:anywhere}
 th:last-child,td:last-child{padding-right:0}
 .n{text-align:right}
+td.n{white-space:nowrap}
 .note{display:block;color:#5b6770;font-size:.92em;margin-top:.1rem}
 .v{white-space:nowrap;font-weight:600}
+.two{display:flex;gap:2rem;align-items:flex-start}
+.two dl{flex:1;grid-template-columns:9rem 1fr}
 dl{display:grid;grid-template-columns:13rem 1fr;margin:.2rem 0;font-size:.9rem;line-height:1.45}
 dt{color:#5b6770;padding:.2rem .8rem .2rem 0}
 dd{margin:0;padding:.2rem 0;overflow-wrap:anywhere}
@@ -44,7 +47,7 @@ figcaption{color:#5b6770;font-size:.82rem;line-height:1.4;margin-top:.4rem}
 .sign{display:flex;gap:2.5rem;margin:3.6rem 0 1rem}
 .sign div{flex:1;border-top:1px solid #1d262d;padding-top:.3rem;font-size:.85rem;color:#5b6770}
 footer{color:#5b6770;font-size:.82rem;margin-top:3rem}
-@media (max-width:44rem){.figures{flex-direction:column}.figures figure{width:100%!important}dl{grid-template-columns:1fr}main{padding:1.2rem}}
+@media (max-width:44rem){.figures,.two{flex-direction:column}.figures figure{width:100%!important}dl{grid-template-columns:1fr}main{padding:1.2rem}}
 @media print{body{font-size:10.5pt}main{max-width:none;padding:0}h2,h3{break-after:avoid}figure,tr,.sign{break-inside:avoid}@page{size:A4;margin:16mm}}
 )";
 
@@ -103,9 +106,21 @@ class HtmlWriter {
     out_ += "</ul>\n";
   }
   void write(const FactsBlock& b) {
+    if (b.in_two_columns) {
+      const auto middle = b.facts.begin() + static_cast<std::ptrdiff_t>((b.facts.size() + 1) / 2);
+      out_ += "<div class=\"two\">\n";
+      facts(b.facts.begin(), middle);
+      facts(middle, b.facts.end());
+      out_ += "</div>\n";
+    } else {
+      facts(b.facts.begin(), b.facts.end());
+    }
+  }
+  using Fact = std::vector<std::pair<std::string, std::string>>::const_iterator;
+  void facts(Fact from, Fact to) {
     out_ += "<dl>\n";
-    for (const auto& [name, value] : b.facts)
-      out_ += "<dt>" + html_escaped(name) + "</dt><dd>" + html_escaped(value) + "</dd>\n";
+    for (; from != to; ++from)
+      out_ += "<dt>" + html_escaped(from->first) + "</dt><dd>" + html_escaped(from->second) + "</dd>\n";
     out_ += "</dl>\n";
   }
   void write(const TableBlock& b) {

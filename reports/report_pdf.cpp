@@ -18,7 +18,7 @@ const TextStyle small{7.8, false, soft_ink, 1.35}, table_text{8.2, false, ink, 1
 constexpr int resolution = 600;
 constexpr double gap = 12, cell_gap = 7;
 // A picture is no taller than this, so that its words stay on its page.
-constexpr double tallest_picture = 330;
+constexpr double tallest_picture = 262;
 
 class PdfReport {
  public:
@@ -41,16 +41,39 @@ class PdfReport {
 
   void section(const Section& s) {
     control_.throw_if_cancelled();
-    flow_.need(90);
+    flow_.need(16 + 26 + lead_height(s.blocks, 0));
     flow_.skip(16);
     flow_.rule(PageFlow::left, PageFlow::left + PageFlow::width, flow_.y(), 1.2, ink);
     flow_.skip(6);
     flow_.paragraph(s.heading, {12, true, ink, 1.4});
     flow_.skip(3);
-    for (const Block& block : s.blocks) std::visit([this](const auto& b) { write(b); }, block);
+    for (std::size_t i = 0; i < s.blocks.size(); ++i) {
+      if (std::holds_alternative<SubheadingBlock>(s.blocks[i])) flow_.need(lead_height(s.blocks, i));
+      std::visit([this](const auto& b) { write(b); }, s.blocks[i]);
+    }
   }
 
  private:
+  // What must stand on one page from block i on: headings and words stay with the picture or table that
+  // follows.
+  double lead_height(const std::vector<Block>& blocks, std::size_t i) {
+    double height = 0;
+    for (; i < blocks.size(); ++i) {
+      if (const auto* text = std::get_if<TextBlock>(&blocks[i])) {
+        height += flow_.text_height(text->text, body, PageFlow::width) + 5;
+      } else if (std::holds_alternative<SubheadingBlock>(blocks[i])) {
+        if (height > 60) break;
+        height += 26;
+      } else if (const auto* figure = std::get_if<FigureBlock>(&blocks[i])) {
+        height += layout(*figure).height + 10;
+        break;
+      } else {
+        height += 70;
+        break;
+      }
+    }
+    return std::min(height, PageFlow::page_height - PageFlow::top - PageFlow::bottom - 60);
+  }
   void write(const TextBlock& b) {
     flow_.paragraph(b.text, body);
     flow_.skip(5);
@@ -65,14 +88,22 @@ class PdfReport {
     flow_.skip(4);
   }
   void write(const FactsBlock& b) {
-    constexpr double name_width = 118;
-    const double value_width = PageFlow::width - name_width;
-    for (const auto& [name, value] : b.facts) {
-      const double height = std::max(flow_.text_height(name, soft, name_width - 8),
-                                     flow_.text_height(value, body, value_width));
+    const std::size_t columns = b.in_two_columns ? 2 : 1, rows = (b.facts.size() + columns - 1) / columns;
+    const double column =
+        (PageFlow::width - gap * static_cast<double>(columns - 1)) / static_cast<double>(columns);
+    const double name_width = columns == 2 ? 88 : 118;
+    for (std::size_t row = 0; row < rows; ++row) {
+      double height = 0;
+      for (std::size_t i = row; i < b.facts.size(); i += rows)
+        height = std::max({height, flow_.text_height(b.facts[i].first, soft, name_width - 8),
+                           flow_.text_height(b.facts[i].second, body, column - name_width)});
       flow_.need(height);
-      flow_.paint_text(PageFlow::left, flow_.y(), name_width - 8, name, soft);
-      flow_.paint_text(PageFlow::left + name_width, flow_.y(), value_width, value, body);
+      double x = PageFlow::left;
+      for (std::size_t i = row; i < b.facts.size(); i += rows) {
+        flow_.paint_text(x, flow_.y(), name_width - 8, b.facts[i].first, soft);
+        flow_.paint_text(x + name_width, flow_.y(), column - name_width, b.facts[i].second, body);
+        x += column + gap;
+      }
       flow_.skip(height + 1.5);
     }
     flow_.skip(4);
@@ -140,35 +171,39 @@ class PdfReport {
       x += b.shares[i] * PageFlow::width;
     }
   }
-  void write(const FigureBlock& b) {
-    const double room = PageFlow::width - gap * static_cast<double>(b.figures.size() - 1);
+  struct FigureLayout {
+    double room, shrink, height;  // points, without the gap below
+  };
+  FigureLayout layout(const FigureBlock& b) {
+    FigureLayout l{PageFlow::width - gap * static_cast<double>(b.figures.size() - 1), 1, 0};
     double tallest = 0;
     for (std::size_t i = 0; i < b.figures.size(); ++i)
-      tallest = std::max(tallest, picture_height(b, i, room));
-    const double shrink = std::min(1.0, tallest_picture / tallest);
-    double height = 0;
-    for (std::size_t i = 0; i < b.figures.size(); ++i) {
-      const double width = b.shares[i] * room * shrink;
-      height = std::max(height, picture_height(b, i, room) * shrink + 4 +
-                                    flow_.text_height(b.figures[i].caption, small, width));
-    }
-    flow_.need(height);
+      tallest = std::max(tallest, picture_height(b, i, l.room));
+    l.shrink = std::min(1.0, tallest_picture / tallest);
+    for (std::size_t i = 0; i < b.figures.size(); ++i)
+      l.height = std::max(
+          l.height, picture_height(b, i, l.room) * l.shrink + 4 +
+                        flow_.text_height(b.figures[i].caption, small, b.shares[i] * l.room * l.shrink));
+    return l;
+  }
+  void write(const FigureBlock& b) {
+    const FigureLayout l = layout(b);
+    flow_.need(l.height);
     double x = PageFlow::left;
     for (std::size_t i = 0; i < b.figures.size(); ++i) {
       control_.throw_if_cancelled();
-      const double width = b.shares[i] * room * shrink, own = picture_height(b, i, room) * shrink;
+      const double width = b.shares[i] * l.room * l.shrink, own = picture_height(b, i, l.room) * l.shrink;
       flow_.image(x, flow_.y(), width, own, image_of(b.figures[i].picture));
       flow_.paint_text(x, flow_.y() + own + 4, width, b.figures[i].caption, small);
       x += width + gap;
     }
-    flow_.skip(height + 10);
+    flow_.skip(l.height + 10);
   }
   static double picture_height(const FigureBlock& b, std::size_t i, double room) {
     const Picture& p = b.figures[i].picture;
     return b.shares[i] * room * p.height / p.width;
   }
   void write(const SubheadingBlock& b) {
-    flow_.need(70);
     flow_.skip(7);
     const double indent = b.verdict ? 15 : 0;
     if (b.verdict)
@@ -209,10 +244,9 @@ void furniture(PageFlow& flow, int page, int pages, const ReportContent& c) {
     const std::string subject = shortened(c.subject, 70);
     const std::string serial = c.serial.empty() ? "" : ", serial " + shortened(c.serial, 40);
     flow.paint_text(PageFlow::left, 32, width - 90, subject + serial, small);
-    paint_verdict_sign(flow.painter(), flow.device(PageFlow::left + width - 58), flow.device(37.5),
+    paint_verdict_sign(flow.painter(), flow.device(PageFlow::left + width - 57), flow.device(37.5),
                        flow.device(8), c.verdict);
-    flow.paint_text(PageFlow::left + width - 50, 32, 50, to_text(c.verdict), {7.8, true, ink, 1.35},
-                    Qt::AlignRight);
+    flow.paint_text(PageFlow::left + width - 49, 32, 60, to_text(c.verdict), {7.8, true, ink, 1.35});
     flow.rule(PageFlow::left, PageFlow::left + width, 48, 0.4, rule_grey);
   }
   const double y = PageFlow::page_height - 40;
