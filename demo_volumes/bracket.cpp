@@ -72,7 +72,7 @@ DemoPart bracket_part(const DemoOptions& options) {
   PartBuilder part("bracket", demo_geometry({22, 16, 12}, options.scale), {1, 0.6, 2}, 2.5);
   part.body(bracket_body());
   for (const Gas& gas : gas_pores) part.gas_pore(gas.centre_mm, gas.diameter_mm);
-  part.cavity("shrinkage", shrinkage_cavity({3.9, 8.0, 3.3}, {1.3, 2.6, 1.1}, 90, 11));
+  part.cavity("shrinkage", shrinkage_cavity({3.9, 8.0, 3.3}, {1.3, 2.6, 1.1}, 45, 11));
   part.cavity("open",
               united({capsule({18.2, 5.2, 5.5}, {17.9, 5.0, 3.2}, 0.22), sphere({17.9, 5.0, 3.0}, 0.5)}));
   part.inclusion(ellipsoid({9.6, 4.6, 3.0}, {0.35, 0.3, 0.4}), 1.6);
