@@ -1,0 +1,140 @@
+// NIfTI-1 (.nii, .nii.gz): a binary header of 348 bytes.
+#include <zlib.h>
+
+#include <algorithm>
+#include <array>
+#include <bit>
+#include <cmath>
+#include <cstring>
+
+#include "io/file_volume.h"
+#include "io/volume_formats.h"
+
+namespace halfmark {
+namespace fs = std::filesystem;
+
+namespace {
+
+constexpr std::size_t header_bytes = 348;
+
+class Fields {
+ public:
+  Fields(const std::string& head, bool swapped) : head_(head), swapped_(swapped) {}
+  template <class T>
+  T at(std::size_t offset) const {
+    std::array<char, sizeof(T)> bytes;
+    std::memcpy(bytes.data(), head_.data() + offset, sizeof(T));
+    if (swapped_) std::reverse(bytes.begin(), bytes.end());
+    return std::bit_cast<T>(bytes);
+  }
+
+ private:
+  const std::string& head_;
+  bool swapped_;
+};
+
+std::string unpacked_head(const fs::path& file) {
+  gzFile in = gzopen(file.c_str(), "rb");  // reads plain files too
+  if (in == nullptr)
+    throw Problem(ExitStatus::input_missing, file.string() + ": cannot be opened for reading");
+  std::string head(header_bytes + 4, '\0');
+  const int got = gzread(in, head.data(), static_cast<unsigned>(head.size()));
+  gzclose(in);
+  if (got < static_cast<int>(header_bytes)) refuse_file(file, "is too short for a NIfTI header");
+  return head;
+}
+
+// Rotation of the quaternion form (NIfTI-1 method 2).
+void from_quaternion(const Fields& f, VolumeGeometry& g) {
+  const double b = f.at<float>(256), c = f.at<float>(260), d = f.at<float>(264),
+               a = std::sqrt(std::max(0.0, 1 - b * b - c * c - d * d));
+  const double handed = f.at<float>(76) < 0 ? -1 : 1;
+  g.direction = {
+      a * a + b * b - c * c - d * d, 2 * (b * c - a * d),           handed * 2 * (b * d + a * c),
+      2 * (b * c + a * d),           a * a + c * c - b * b - d * d, handed * 2 * (c * d - a * b),
+      2 * (b * d - a * c),           2 * (c * d + a * b),           handed * (a * a + d * d - b * b - c * c)};
+  g.origin_mm = {f.at<float>(268), f.at<float>(272), f.at<float>(276)};
+}
+
+// Affine form (NIfTI-1 method 3).
+void from_affine(const Fields& f, VolumeGeometry& g) {
+  for (std::size_t axis = 0; axis < 3; ++axis) {
+    Vec3 v;
+    for (std::size_t row = 0; row < 3; ++row) v[row] = f.at<float>(280 + 16 * row + 4 * axis);
+    g.spacing_mm[axis] = length(v);
+    for (std::size_t row = 0; row < 3; ++row) g.direction[3 * row + axis] = v[row] / length(v);
+  }
+  for (std::size_t row = 0; row < 3; ++row) g.origin_mm[row] = f.at<float>(280 + 16 * row + 12);
+}
+
+}  // namespace
+
+OpenedVolume open_nifti(const fs::path& file) {
+  const std::string head = unpacked_head(file);
+  std::int32_t mark = 0;
+  std::memcpy(&mark, head.data(), sizeof mark);
+  const bool swapped = mark != 348;
+  const Fields f(head, swapped);
+  if (f.at<std::int32_t>(0) != 348)
+    refuse_file(file, "is not a NIfTI-1 file: its header does not start with 348");
+  if (std::memcmp(head.data() + 344, "n+1", 3) != 0)
+    refuse_file(file, "only single-file NIfTI-1 (.nii) is read, not header and image apart");
+  const auto dims = f.at<std::int16_t>(40);
+  if (dims < 3 || dims > 7 || (dims > 3 && f.at<std::int16_t>(48) > 1))
+    refuse_file(file, "needs three dimensions");
+  OpenedVolume out;
+  out.format = "NIfTI";
+  VolumeGeometry geometry;
+  for (std::size_t a = 0; a < 3; ++a) {
+    geometry.size[a] = f.at<std::int16_t>(42 + 2 * a);
+    geometry.spacing_mm[a] = f.at<float>(80 + 4 * a);
+  }
+  out.has_voxel_size = true;
+  if (f.at<std::int16_t>(252) > 0) {
+    from_quaternion(f, geometry);
+  } else if (f.at<std::int16_t>(254) > 0) {
+    from_affine(f, geometry);
+  }
+  // NIfTI's x and y point right and forward; ours are kept as in the other formats (left, backward).
+  for (std::size_t i = 0; i < 6; ++i) geometry.direction[i] = 0.0 - geometry.direction[i];
+  geometry.origin_mm[0] = 0.0 - geometry.origin_mm[0];
+  geometry.origin_mm[1] = 0.0 - geometry.origin_mm[1];
+  const auto units = static_cast<int>(head[123]) & 7;
+  const double scale = units == 1 ? 1000 : units == 3 ? 0.001 : 1;  // metre, micrometre, else mm
+  for (std::size_t a = 0; a < 3; ++a) {
+    geometry.spacing_mm[a] *= scale;
+    geometry.origin_mm[a] *= scale;
+  }
+  VoxelType type = VoxelType::u8;
+  switch (f.at<std::int16_t>(70)) {
+    case 2:
+      type = VoxelType::u8;
+      break;
+    case 4:
+      type = VoxelType::i16;
+      break;
+    case 16:
+      type = VoxelType::f32;
+      break;
+    case 256:
+      type = VoxelType::i8;
+      break;
+    case 512:
+      type = VoxelType::u16;
+      break;
+    default:
+      refuse_file(file, "its voxel type is not read; export 8- or 16-bit integers or 32-bit floats");
+  }
+  const double offset = static_cast<double>(f.at<float>(108));
+  if (!(offset >= 348 && offset < 1e9))
+    refuse_file(file, "its data offset is not plausible; the header is damaged");
+  const bool big_endian = swapped == (std::endian::native == std::endian::little);
+  const bool packed = static_cast<unsigned char>(file_head(file, 2)[0]) == 0x1f;
+  out.source = packed
+                   ? inflate_volume(file, 0, geometry, type, big_endian, static_cast<std::uint64_t>(offset))
+                   : map_volume(file, static_cast<std::uint64_t>(offset), geometry, type, big_endian);
+  out.data_files.push_back(file);
+  return out;
+}
+
+}  // namespace halfmark
