@@ -6,17 +6,12 @@
 
 #include "analysis/inspection_result.h"
 #include "analysis/pore_segmentation.h"
+#include "io/dispositions.h"
 #include "io/run_control.h"
 #include "io/triangle_mesh.h"
 #include "io/volume_open.h"
 
 namespace halfmark {
-
-struct Disposition {   // an inspector's exclusion of one finding
-  Vec3 position_mm{};  // of the pore it means (ids may change between runs)
-  double tolerance_mm = 0;
-  std::string reason, by, when;
-};
 
 struct InspectOptions {
   int body = 0;     // 0: the largest

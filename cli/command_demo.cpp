@@ -1,0 +1,39 @@
+#include <CLI/CLI.hpp>
+#include <cstdio>
+
+#include "cli/commands.h"
+#include "cli/terminal.h"
+#include "demo_volumes/demo_part.h"
+
+namespace halfmark {
+
+Command add_demo(CLI::App& app) {
+  struct Arguments {
+    std::string name, folder;
+    bool list = false, quiet = false;
+  };
+  auto arguments = std::make_shared<Arguments>();
+  app.add_option("NAME", arguments->name, "which demo part; see --list");
+  app.add_option("--out", arguments->folder,
+                 "the folder to write NAME.mha, NAME.spec.json and NAME.truth.json to");
+  app.add_flag("--list", arguments->list, "list the demo parts");
+  app.add_flag("--quiet", arguments->quiet, "no progress");
+  return [arguments] {
+    if (arguments->list) {
+      for (const std::string& name : demo_names())
+        std::printf("%-14s %s\n", name.c_str(), demo_part(name).sentence.c_str());
+      return 0;
+    }
+    if (arguments->name.empty())
+      throw Problem(ExitStatus::usage, "demo: name a part; see halfmark demo --list");
+    if (arguments->folder.empty())
+      throw Problem(ExitStatus::usage, "demo: say where to write with --out DIR");
+    const RunControl control = terminal_control(arguments->quiet);
+    write_demo(demo_part(arguments->name), arguments->folder, control);
+    end_progress();
+    std::printf("%s/%s.mha, .spec.json, .truth.json\n", arguments->folder.c_str(), arguments->name.c_str());
+    return 0;
+  };
+}
+
+}  // namespace halfmark
