@@ -153,6 +153,7 @@ Touches touches_of(const RunLabels& labels, std::int32_t count, const PartMap& p
 
 struct VolumeOfPore {
   double voxels = 0;
+  double correction = 0;                    // taken off each voxel's share
   std::vector<Contribution> contributions;  // voxels
 };
 
@@ -172,6 +173,7 @@ VolumeOfPore volume_of(const PoreSums& s, const GreyLevels& levels, const Materi
   }
   const double n = static_cast<double>(s.window_voxels);
   VolumeOfPore out;
+  out.correction = correction;
   out.voxels = std::max(static_cast<double>(s.window) / unit - n * correction, 0.0);
   out.contributions = {{"noise", std::sqrt(n * noise2)},
                        {"local level", n * level_error},
@@ -262,10 +264,20 @@ void sort_pores(std::vector<Pore>& pores) {
   });
 }
 
+// What the ring around each pore takes off its voxels' shares, in 1/PoreField::unit; index: label.
+std::vector<double> corrections_of(const Found& found, const GreyLevels& levels, const MaterialLevel& level) {
+  std::vector<double> out;
+  for (const PoreSums& s : found.windows.sums) {
+    out.push_back(PoreField::unit * volume_of(s, levels, level, found.candidates.white_ratio).correction);
+  }
+  return out;
+}
+
 // Rows of `from` with labels replaced (0: dropped) and, where given, one value per voxel kept.
 void add_renumbered(std::span<const LabelRun> row, const std::vector<std::int32_t>& number,
-                    const std::vector<std::int16_t>* fraction, std::size_t& at, double scale,
-                    std::vector<LabelRun>& runs, std::vector<std::vector<std::int16_t>>* values) {
+                    const std::vector<std::int16_t>* fraction, const std::vector<double>* correction,
+                    std::size_t& at, double scale, std::vector<LabelRun>& runs,
+                    std::vector<std::vector<std::int16_t>>* values) {
   for (const LabelRun& run : row) {
     const auto length = static_cast<std::size_t>(run.end - run.begin);
     const std::int32_t label = number[static_cast<std::size_t>(run.label)];
@@ -274,7 +286,9 @@ void add_renumbered(std::span<const LabelRun> row, const std::vector<std::int32_
       if (fraction != nullptr) {
         values->emplace_back();
         for (std::size_t k = 0; k < length; ++k) {
-          const double scaled = static_cast<double>((*fraction)[at + k]) * scale;
+          const double own =
+              static_cast<double>((*fraction)[at + k]) - (*correction)[static_cast<std::size_t>(run.label)];
+          const double scaled = own * scale;
           values->back().push_back(
               static_cast<std::int16_t>(std::lround(std::clamp(scaled, -32000.0, 32000.0))));
         }
@@ -296,7 +310,8 @@ std::vector<std::int32_t> new_numbers(const std::vector<Pore>& pores, std::int32
 // Joins the windows and labels of both signs under the final numbers. Where a pore's and an inclusion's
 // window overlap the pore keeps the voxel.
 PoreField join_fields(const std::vector<const Found*>& found,
-                      const std::vector<std::vector<std::int32_t>>& numbers, double share,
+                      const std::vector<std::vector<std::int32_t>>& numbers,
+                      const std::vector<std::vector<double>>& corrections, double share,
                       const std::array<std::int64_t, 3>& size) {
   PoreField out;
   out.windows = RunLabels(size);
@@ -307,8 +322,8 @@ PoreField join_fields(const std::vector<const Found*>& found,
       std::vector<LabelRun> runs;
       std::vector<std::vector<std::int16_t>> values;
       for (std::size_t f = 0; f < found.size(); ++f) {
-        add_renumbered(found[f]->windows.windows.row(y, z), numbers[f], &found[f]->windows.fraction, at[f],
-                       1 / share, runs, &values);
+        add_renumbered(found[f]->windows.windows.row(y, z), numbers[f], &found[f]->windows.fraction,
+                       &corrections[f], at[f], 1 / share, runs, &values);
       }
       std::vector<std::size_t> order(runs.size());
       std::iota(order.begin(), order.end(), std::size_t{0});
@@ -325,7 +340,7 @@ PoreField join_fields(const std::vector<const Found*>& found,
       out.windows.end_row();
       runs.clear();
       for (std::size_t f = 0; f < found.size(); ++f)
-        add_renumbered(found[f]->labels.row(y, z), numbers[f], nullptr, unused[f], 1, runs, nullptr);
+        add_renumbered(found[f]->labels.row(y, z), numbers[f], nullptr, nullptr, unused[f], 1, runs, nullptr);
       std::stable_sort(runs.begin(), runs.end(),
                        [](const LabelRun& a, const LabelRun& b) { return a.begin < b.begin; });
       for (const LabelRun& run : runs) out.labels.add_run(run);
@@ -366,11 +381,13 @@ SegmentedPores segment_pores(const VolumeSource& source, const FieldOfView& fiel
   sort_pores(out.pores);
   std::vector<const Found*> found{&dark};
   std::vector<std::vector<std::int32_t>> numbers{new_numbers(out.pores, dark.count, 1)};
+  std::vector<std::vector<double>> corrections{corrections_of(dark, levels, level)};
   if (options.inclusions) {
     found.push_back(&bright);
     numbers.push_back(new_numbers(out.pores, bright.count, -1));
+    corrections.push_back(corrections_of(bright, levels, level));
   }
-  out.field = join_fields(found, numbers, share, geometry.size);
+  out.field = join_fields(found, numbers, corrections, share, geometry.size);
   for (std::size_t i = 0; i < out.pores.size(); ++i) out.pores[i].id = static_cast<std::int32_t>(i) + 1;
   control.step("pores", 1);
   return out;
