@@ -10,6 +10,8 @@
 #include <utility>
 #include <vector>
 
+#include "analysis/wide_registers.h"
+
 namespace halfmark {
 
 namespace {
@@ -41,9 +43,9 @@ struct Grid {
 typedef float Eight __attribute__((vector_size(batch * sizeof(float))));
 
 // Calipers of the points x, y, z along eight axes. Elementwise, so that every clone gives the same bits.
-__attribute__((target_clones("avx2", "default"))) void batch_calipers(const float* x, const float* y,
-                                                                      const float* z, std::size_t count,
-                                                                      const Batch& axes, float* out) {
+HALFMARK_FOR_WIDE_REGISTERS
+void batch_calipers(const float* x, const float* y, const float* z, std::size_t count, const Batch& axes,
+                    float* out) {
   Eight ax, ay, az;
   std::memcpy(&ax, axes.x.data(), sizeof ax);
   std::memcpy(&ay, axes.y.data(), sizeof ay);

@@ -2,6 +2,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <cstdint>
 #include <type_traits>
 
 #include "analysis/wide_registers.h"
@@ -29,6 +30,35 @@ HALFMARK_FOR_WIDE_REGISTERS
 void deficits_of(float* grey_to_deficit, const float* level, float air, std::int64_t count) {
   for (std::int64_t x = 0; x < count; ++x)
     grey_to_deficit[x] = (level[x] - grey_to_deficit[x]) / (level[x] - air);
+}
+
+// Sets border[1 .. count - 2]: not zero where the row's flag differs from that of a 6-neighbour.
+HALFMARK_FOR_WIDE_REGISTERS
+void mark_border(std::uint8_t* border, const std::uint8_t* row, std::int64_t count, std::int64_t plane) {
+  const std::uint8_t *above = row - count, *below = row + count, *before = row - plane, *after = row + plane;
+  for (std::int64_t x = 1; x + 1 < count; ++x) {
+    const int f = row[x];
+    border[x] = static_cast<std::uint8_t>((f ^ row[x - 1]) | (f ^ row[x + 1]) | (f ^ above[x]) |
+                                          (f ^ below[x]) | (f ^ before[x]) | (f ^ after[x]));
+  }
+}
+
+HALFMARK_FOR_WIDE_REGISTERS
+void mark_usable(std::uint8_t* usable, const float* coverage, const float* grey, float least, float threshold,
+                 std::int64_t begin, std::int64_t end) {
+  for (std::int64_t x = begin; x < end; ++x)
+    usable[x] = static_cast<std::uint8_t>((coverage[x] >= least) | (grey[x] < threshold));
+}
+
+// Deficits against the grey value that a partly covered voxel should have; 0 where the voxel is not usable.
+HALFMARK_FOR_WIDE_REGISTERS
+void border_deficits_of(float* grey_to_deficit, const float* level, const float* coverage,
+                        const std::uint8_t* usable, float air, std::int64_t count) {
+  for (std::int64_t x = 0; x < count; ++x) {
+    const float expected = air + coverage[x] * (level[x] - air);
+    const float deficit = (expected - grey_to_deficit[x]) / (level[x] - air);
+    grey_to_deficit[x] = usable[x] != 0 ? deficit : 0.0f;
+  }
 }
 
 // Inverse of the normal distribution, good to 0.002 within +-2.5 (Abramowitz & Stegun 26.2.22 is coarser than
@@ -158,44 +188,57 @@ void GreyDeficit::cover_border(const GreyPlanes& planes, const VoxelBox& box,
   const auto& size = source_.geometry().size;
   const std::int64_t nx = box.extent(0), ny = box.extent(1), nz = box.extent(2);
   coverage.assign(static_cast<std::size_t>(nx * ny * nz), 0);
+  std::vector<std::uint8_t> flags(coverage.size(), 0);
+  std::vector<Content> rows(static_cast<std::size_t>(ny * nz), Content::none);
   const auto clamped = [&](std::int64_t v, std::size_t a) {
     return std::clamp<std::int64_t>(v, 0, size[a] - 1);
   };
   for (std::int64_t z = 0; z < nz; ++z) {
     for (std::int64_t y = 0; y < ny; ++y) {
       const std::int64_t sy = clamped(box.begin[1] + y, 1), sz = clamped(box.begin[2] + z, 2);
-      float* row = coverage.data() + (z * ny + y) * nx;
+      const std::int64_t r = z * ny + y;
+      std::int64_t filled = 0;
       for (const Run& run : part_.inside.row(sy, sz)) {
         const std::int64_t begin =
             run.begin == 0 ? 0 : std::clamp<std::int64_t>(run.begin - box.begin[0], 0, nx);
         const std::int64_t end =
             run.end == size[0] ? nx : std::clamp<std::int64_t>(run.end - box.begin[0], 0, nx);
-        for (std::int64_t x = begin; x < end; ++x) row[x] = 1;
+        if (begin >= end) continue;
+        std::fill(coverage.data() + r * nx + begin, coverage.data() + r * nx + end, 1.0f);
+        std::fill(flags.data() + r * nx + begin, flags.data() + r * nx + end, std::uint8_t{1});
+        filled += end - begin;
       }
+      rows[static_cast<std::size_t>(r)] = filled == 0    ? Content::none
+                                          : filled == nx ? Content::all
+                                                         : Content::some;
     }
   }
   // Border voxels: a flag differs from a 6-neighbour's. Their grey value tells how far the face is.
-  const std::vector<float> flags = coverage;
   const T* greys = reinterpret_cast<const T*>(planes.voxels);
   const double contrast = levels_.contrast();
+  std::vector<std::uint8_t> border(static_cast<std::size_t>(nx));
   for (std::int64_t z = 1; z + 1 < nz; ++z) {
     for (std::int64_t y = 1; y + 1 < ny; ++y) {
       const std::int64_t gy = box.begin[1] + y, gz = box.begin[2] + z;
       if (gy < 0 || gz < planes.z_begin || gy >= size[1] || gz >= planes.z_end) continue;
+      const std::int64_t r = z * ny + y;
+      const auto same = [&](std::int64_t d) {
+        return rows[static_cast<std::size_t>(r + d)] == rows[static_cast<std::size_t>(r)];
+      };
+      if (rows[static_cast<std::size_t>(r)] != Content::some && same(1) && same(-1) && same(ny) && same(-ny))
+        continue;
+      const std::uint8_t* row = flags.data() + r * nx;
+      mark_border(border.data(), row, nx, nx * ny);
       for (std::int64_t x = 1; x + 1 < nx; ++x) {
-        const std::int64_t i = (z * ny + y) * nx + x, gx = box.begin[0] + x;
-        const float f = flags[static_cast<std::size_t>(i)];
-        const auto differs = [&](std::int64_t d) { return flags[static_cast<std::size_t>(i + d)] != f; };
-        if (!(differs(1) || differs(-1) || differs(nx) || differs(-nx) || differs(nx * ny) ||
-              differs(-nx * ny)))
-          continue;
-        if (gx < 0 || gx >= size[0]) continue;
+        const std::int64_t gx = box.begin[0] + x;
+        if (border[static_cast<std::size_t>(x)] == 0 || gx < 0 || gx >= size[0]) continue;
         const double grey = static_cast<double>(greys[((gz - planes.z_begin) * size[1] + gy) * size[0] + gx]);
         // A border voxel whose grey contradicts its flag belongs to a mouth or to rough ground: the mask
         // decides.
-        if ((grey >= levels_.threshold) != (f > 0.5f)) continue;
+        if ((grey >= levels_.threshold) != (row[x] != 0)) continue;
         const double depth = edge_width_ * normal_quantile((grey - levels_.air) / contrast);
-        coverage[static_cast<std::size_t>(i)] = static_cast<float>(std::clamp(0.5 + depth, 0.0, 1.0));
+        coverage[static_cast<std::size_t>(r * nx + x)] =
+            static_cast<float>(std::clamp(0.5 + depth, 0.0, 1.0));
       }
     }
   }
@@ -249,12 +292,9 @@ void GreyDeficit::fill_typed(const GreyPlanes& planes, DeficitBlock& block) cons
             run.begin == 0 ? 0 : std::clamp<std::int64_t>(run.begin - box.begin[0], 0, nx);
         const std::int64_t end =
             run.end == size[0] ? nx : std::clamp<std::int64_t>(run.end - box.begin[0], 0, nx);
-        for (std::int64_t x = begin; x < end; ++x) usable[x] = p[x] >= least_coverage || out[x] < threshold;
+        mark_usable(usable, p, out, least_coverage, threshold, begin, end);
       }
-      for (std::int64_t x = 0; x < nx; ++x) {
-        const float expected = air + p[x] * (level[static_cast<std::size_t>(x)] - air);
-        out[x] = usable[x] != 0 ? (expected - out[x]) / (level[static_cast<std::size_t>(x)] - air) : 0.0f;
-      }
+      border_deficits_of(out, level.data(), p, usable, air, nx);
     }
   }
 }
