@@ -5,6 +5,7 @@
 #include <cstdarg>
 #include <cstdio>
 #include <cstring>
+#include <fstream>
 #include <memory>
 #include <mutex>
 
@@ -87,6 +88,25 @@ void check_strips(TIFF* tiff, std::uintmax_t file_size, const fs::path& file, st
       refuse_file(
           file, "page " + std::to_string(page) + " promises more data than the file holds; it is truncated");
     }
+  }
+}
+
+// libtiff takes a directory whose link to the next one is cut off for the last one: the file's own end tells.
+void check_directory(TIFF* tiff, std::uintmax_t file_size, const fs::path& file, std::int64_t page) {
+  const std::string head = file_head(file, 4);
+  const bool big_endian = head[0] == 'M', big_tiff = (big_endian ? head[3] : head[2]) == 43;
+  const std::uint64_t offset = TIFFCurrentDirOffset(tiff);
+  std::ifstream in(file, std::ios::binary);
+  in.seekg(static_cast<std::streamoff>(offset));
+  std::uint64_t entries = 0;
+  const int bytes = big_tiff ? 8 : 2;
+  for (int i = 0; i < bytes; ++i) {
+    const auto byte = static_cast<std::uint64_t>(static_cast<unsigned char>(in.get()));
+    entries = big_endian ? (entries << 8) | byte : entries | (byte << (8 * i));
+  }
+  const std::uint64_t length = big_tiff ? 16 + 20 * entries : 6 + 12 * entries;
+  if (!in || entries > 65536 || offset > file_size || length > file_size - offset) {
+    refuse_file(file, "page " + std::to_string(page) + ": its directory is cut off; the file is truncated");
   }
 }
 
@@ -195,6 +215,7 @@ OpenedVolume open_tiff(const fs::path& file) {
     if (!(page == first))
       refuse_file(file, "page " + std::to_string(number) +
                             " differs in size or voxel type from the first; all must agree");
+    check_directory(handle.get(), size, file, number);
     check_strips(handle.get(), size, file, number);
     slices.push_back({file, TIFFCurrentDirOffset(handle.get())});
     last_message.clear();

@@ -11,6 +11,8 @@
 
 #include <algorithm>
 #include <cstring>
+#include <fstream>
+#include <iterator>
 
 #include "io/file_volume.h"
 #include "io/memory_volume.h"
@@ -28,6 +30,17 @@ class ErrorNote : public vtkCommand {
   void Execute(vtkObject*, unsigned long, void*) override { seen = true; }
   bool seen = false;
 };
+
+// VTK reads what is missing from a truncated file as anything; the closing tag tells that the file is whole.
+bool ends_whole(const fs::path& file) {
+  std::ifstream in(file, std::ios::binary);
+  in.seekg(0, std::ios::end);
+  const auto size = static_cast<std::int64_t>(in.tellg());
+  constexpr std::int64_t tail_bytes = 64;
+  in.seekg(std::max<std::int64_t>(0, size - tail_bytes));
+  const std::string tail{std::istreambuf_iterator<char>(in), {}};
+  return tail.find("</VTKFile>") != std::string::npos;
+}
 
 VoxelType voxel_type(int vtk_type, const fs::path& file) {
   switch (vtk_type) {
@@ -53,6 +66,7 @@ OpenedVolume open_vti(const fs::path& file) {
   const std::string head = file_head(file, 4096);
   if (head.find("<VTKFile") == std::string::npos || head.find("ImageData") == std::string::npos)
     refuse_file(file, "is no VTK image data");
+  if (!ends_whole(file)) refuse_file(file, "is truncated: its closing tag is missing");
   vtkNew<vtkXMLImageDataReader> reader;
   vtkNew<ErrorNote> note;
   reader->AddObserver(vtkCommand::ErrorEvent, note);
