@@ -43,6 +43,11 @@ std::string number_text(double value, int significant) {
 RoundedMeasure rounded(double value, double expanded_uncertainty) {
   if (!(expanded_uncertainty > 0) || !std::isfinite(expanded_uncertainty)) return {number_text(value), "0"};
   const int decimals = 2 - leading_place(expanded_uncertainty);
+  if (decimals < 0) {  // whole tens, hundreds ...: the digits below say nothing
+    const double unit = std::pow(10.0, -decimals);
+    value = unit * std::round(value / unit);
+    expanded_uncertainty = unit * std::round(expanded_uncertainty / unit);
+  }
   return {fixed_text(value, decimals), fixed_text(expanded_uncertainty, decimals)};
 }
 
