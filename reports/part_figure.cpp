@@ -19,24 +19,7 @@ constexpr double azimuth = -32, elevation = 26;  // front, right and top are see
 // Pores that would be smaller than this on the picture are drawn as a dot of this size.
 constexpr double least_pore_px = 3;
 // Walls that are none (edges, corners) and those at or beyond the reach of the measurement.
-constexpr Rgb not_a_wall{0xd7, 0xdb, 0xde}, beyond_reach{0xee, 0xf0, 0xf2};
-
-struct Box {
-  Vec3 low{0, 0, 0}, high{0, 0, 0};
-};
-
-Box box_of(const TriangleMesh& mesh) {
-  Box box;
-  if (mesh.vertices_mm.empty()) return box;
-  for (std::size_t a = 0; a < 3; ++a) box.low[a] = box.high[a] = mesh.vertices_mm[0][a];
-  for (const auto& v : mesh.vertices_mm) {
-    for (std::size_t a = 0; a < 3; ++a) {
-      box.low[a] = std::min<double>(box.low[a], v[a]);
-      box.high[a] = std::max<double>(box.high[a], v[a]);
-    }
-  }
-  return box;
-}
+constexpr Rgb not_a_wall{0xc2, 0xc8, 0xcc}, beyond_reach{0xf6, 0xec, 0xc6};
 
 QImage image_from(const SceneRender& scene, int width, int height) {
   const std::vector<std::uint8_t> rgb = scene.pixels();
@@ -66,8 +49,14 @@ void add_pores(SceneRender& scene, const Camera& camera, const InspectionRun& ru
   }
 }
 
+// A place on or in a body that is itself drawn is not hidden by it.
+double hidden_beyond_mm(const EvidencePlace& place) {
+  return place.evidence.extent_mm > 0 ? place.evidence.extent_mm : 0;
+}
+
 // The letter stands beside its place, away from the picture's middle, with a line to it.
-void paint_letters(QPainter& painter, const Camera& camera, const std::vector<EvidencePlace>& places) {
+void paint_letters(QPainter& painter, const Camera& camera, const std::vector<EvidencePlace>& places,
+                   const SceneRender& scene) {
   std::vector<QPointF> taken;
   for (const EvidencePlace& place : places) {
     const Vec3 p = camera.project(*place.evidence.position_mm);
@@ -90,8 +79,11 @@ void paint_letters(QPainter& painter, const Camera& camera, const std::vector<Ev
     painter.setBrush(Qt::NoBrush);
     painter.setPen(QPen(Qt::white, 5));
     painter.drawEllipse(at, 11, 11);
-    painter.setPen(QPen(colour_of(ink), 2));
+    // A dotted ring: the place lies behind what is seen.
+    const bool hidden = scene.hides(*place.evidence.position_mm, hidden_beyond_mm(place));
+    painter.setPen(QPen(colour_of(ink), 2, hidden ? Qt::DotLine : Qt::SolidLine));
     painter.drawEllipse(at, 11, 11);
+    painter.setPen(QPen(colour_of(ink), 2));
     const QPointF d = tag - at;
     const double distance = std::max(1.0, std::hypot(d.x(), d.y()));
     painter.drawLine(at + 11 / distance * d, tag);
@@ -179,8 +171,7 @@ Figure part_figure(const InspectionRun& run, const VolumeGeometry& geometry,
                    const std::vector<EvidencePlace>& places, const RunControl& control) {
   const TriangleMesh& surface = run.outer_surface.triangles.empty() ? run.surface : run.outer_surface;
   if (surface.triangles.empty()) return {};
-  const Box box = box_of(surface);
-  const Camera camera = camera_at(box.low, box.high, azimuth, elevation, part_width, part_height, margin_px);
+  const Camera camera = camera_for(surface, azimuth, elevation, part_width, part_height, margin_px);
   SceneRender scene(camera);
   scene.add_glass(surface);
   control.throw_if_cancelled();
@@ -188,7 +179,7 @@ Figure part_figure(const InspectionRun& run, const VolumeGeometry& geometry,
   QImage image = image_from(scene, part_width, part_height);
   QPainter painter(&image);
   painter.setRenderHint(QPainter::Antialiasing);
-  paint_letters(painter, camera, places);
+  paint_letters(painter, camera, places, scene);
   paint_directions(painter, camera, 58, part_height - 52);
   paint_plain_scale(painter, part_width - 300, part_height - 22, camera);
   painter.end();
@@ -204,7 +195,6 @@ Figure wall_figure(const InspectionRun& run, const std::vector<EvidencePlace>& p
   std::vector<EvidencePlace> thin;
   for (const EvidencePlace& place : places)
     if (place.wall) thin.push_back(place);
-  const Box box = box_of(run.outer_surface);
   const ThicknessScale scale = thickness_scale(run);
   const std::vector<Rgb> colours = thickness_colours(*run.walls, scale);
   QImage image = blank_image(2 * wall_width, wall_height + legend_height);
@@ -213,14 +203,14 @@ Figure wall_figure(const InspectionRun& run, const std::vector<EvidencePlace>& p
   for (int side = 0; side < 2; ++side) {
     control.throw_if_cancelled();
     const double turn = side == 0 ? azimuth : azimuth + 180;
-    const Camera camera = camera_at(box.low, box.high, turn, side == 0 ? elevation : -elevation, wall_width,
-                                    wall_height, margin_px);
+    const Camera camera = camera_for(run.outer_surface, turn, side == 0 ? elevation : -elevation, wall_width,
+                                     wall_height, margin_px);
     SceneRender scene(camera);
     scene.add_solid(run.outer_surface, colours);
     QImage view = image_from(scene, wall_width, wall_height);
     QPainter over(&view);
     over.setRenderHint(QPainter::Antialiasing);
-    paint_letters(over, camera, thin);
+    paint_letters(over, camera, thin, scene);
     paint_directions(over, camera, 54, wall_height - 52);
     over.end();
     painter.drawImage(side * wall_width, 0, view);

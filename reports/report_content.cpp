@@ -61,11 +61,11 @@ Section requirement_section(const Inspection& in, const std::vector<EvidencePlac
   for (std::size_t i = 0; i < in.requirements.size(); ++i) {
     const RequirementResult& r = in.requirements[i];
     factor = r.coverage_factor;
-    table.rows.push_back({text_cell(one_line(r.requirement.id)),
-                          text_cell(capitalised(requirement_words(r.requirement)), one_line(r.reason)),
-                          number_cell(limit_words(r)), number_cell(value_words(r)),
-                          number_cell(margin_words(r)), text_cell(letter_of(places, i)),
-                          verdict_cell(r.verdict)});
+    table.rows.push_back(
+        {text_cell(one_line(r.requirement.id)), text_cell(capitalised(requirement_words(r.requirement))),
+         number_cell(limit_words(r)), number_cell(value_words(r)), number_cell(margin_words(r)),
+         text_cell(letter_of(places, i)), verdict_cell(r.verdict)});
+    table.notes.push_back(one_line(r.reason));
   }
   Section section{"Requirements", {table}};
   section.blocks.push_back(

@@ -32,6 +32,8 @@ struct TableBlock {
   std::vector<Cell> header;
   std::vector<std::vector<Cell>> rows;
   std::vector<double> shares;  // of the width, one a column
+  std::vector<std::string>
+      notes;  // one a row or none at all: a sentence under the row from its second column on
 };
 struct FigureBlock {
   std::vector<Figure> figures;  // side by side

@@ -34,6 +34,8 @@ th:last-child,td:last-child{padding-right:0}
 .n{text-align:right}
 td.n{white-space:nowrap}
 .note{display:block;color:#5b6770;font-size:.92em;margin-top:.1rem}
+.noted td{border-bottom:0;padding-bottom:.1rem}
+.under td{color:#5b6770;font-size:.92em;padding-top:0}
 .v{white-space:nowrap;font-weight:600}
 .two{display:flex;gap:2rem;align-items:flex-start}
 .two dl{flex:1;grid-template-columns:9rem 1fr}
@@ -131,10 +133,14 @@ class HtmlWriter {
       out_ += std::string("<th scope=\"col\"") + (cell.number ? " class=\"n\">" : ">") +
               html_escaped(cell.text) + "</th>";
     out_ += "</tr></thead>\n<tbody>\n";
-    for (const auto& row : b.rows) {
-      out_ += "<tr>";
-      for (const Cell& cell : row) write(cell);
+    for (std::size_t i = 0; i < b.rows.size(); ++i) {
+      const bool noted = i < b.notes.size() && !b.notes[i].empty();
+      out_ += noted ? "<tr class=\"noted\">" : "<tr>";
+      for (const Cell& cell : b.rows[i]) write(cell);
       out_ += "</tr>\n";
+      if (noted)
+        out_ += "<tr class=\"under\"><td></td><td colspan=\"" + std::to_string(b.rows[i].size() - 1) + "\">" +
+                html_escaped(b.notes[i]) + "</td></tr>\n";
     }
     out_ += "</tbody>\n</table>\n";
   }

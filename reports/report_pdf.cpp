@@ -110,13 +110,13 @@ class PdfReport {
   }
   void write(const TableBlock& b) {
     header(b);
-    for (const auto& row : b.rows) {
-      const double height = row_height(b, row);
+    for (std::size_t i = 0; i < b.rows.size(); ++i) {
+      const double height = row_height(b, i);
       if (flow_.y() + height > PageFlow::page_height - PageFlow::bottom) {
         flow_.need(PageFlow::page_height);
         header(b);
       }
-      paint_row(b, row);
+      paint_row(b, i);
       flow_.skip(height);
       flow_.rule(PageFlow::left, PageFlow::left + PageFlow::width, flow_.y(), 0.4, rule_grey);
     }
@@ -142,16 +142,26 @@ class PdfReport {
   static double column_width(const TableBlock& b, std::size_t i) {
     return b.shares[i] * PageFlow::width - (i + 1 < b.shares.size() ? cell_gap : 0);
   }
-  double row_height(const TableBlock& b, const std::vector<Cell>& row) {
+  static std::string note_of(const TableBlock& b, std::size_t row) {
+    return row < b.notes.size() ? b.notes[row] : "";
+  }
+  static double note_width(const TableBlock& b) { return (1 - b.shares[0]) * PageFlow::width; }
+  double cells_height(const TableBlock& b, const std::vector<Cell>& row) {
     double height = 0;
     for (std::size_t i = 0; i < row.size(); ++i) {
       double own = flow_.text_height(row[i].text, table_text, column_width(b, i) - (row[i].verdict ? 13 : 0));
       if (!row[i].note.empty()) own += flow_.text_height(row[i].note, small, column_width(b, i));
       height = std::max(height, own);
     }
-    return height + 7;
+    return height;
   }
-  void paint_row(const TableBlock& b, const std::vector<Cell>& row) {
+  double row_height(const TableBlock& b, std::size_t row) {
+    const std::string note = note_of(b, row);
+    return cells_height(b, b.rows[row]) + (note.empty() ? 0 : flow_.text_height(note, small, note_width(b))) +
+           7;
+  }
+  void paint_row(const TableBlock& b, std::size_t index) {
+    const std::vector<Cell>& row = b.rows[index];
     double x = PageFlow::left;
     const double y = flow_.y() + 3.5;
     for (std::size_t i = 0; i < row.size(); ++i) {
@@ -170,6 +180,10 @@ class PdfReport {
       }
       x += b.shares[i] * PageFlow::width;
     }
+    const std::string note = note_of(b, index);
+    if (!note.empty())
+      flow_.paint_text(PageFlow::left + b.shares[0] * PageFlow::width, y + cells_height(b, row),
+                       note_width(b), note, small);
   }
   struct FigureLayout {
     double room, shrink, height;  // points, without the gap below

@@ -16,7 +16,7 @@ constexpr Rgb glass_colour{0x4a, 0x5a, 0x68};
 // How much of the glass before a solid is seen on it: enough to lie inside the part, not enough to hide.
 constexpr float veil = 0.18f;
 // A solid's shade away from the light.
-constexpr float ambient = 0.45f;
+constexpr float ambient = 0.55f;
 
 std::vector<std::array<float, 3>> vertex_normals(const TriangleMesh& mesh) {
   std::vector<std::array<float, 3>> normals(mesh.vertices_mm.size(), {0, 0, 0});
@@ -59,6 +59,38 @@ Camera camera_at(const Vec3& min_mm, const Vec3& max_mm, double azimuth_degrees,
   const double fit_y = half_up > 0 ? (0.5 * height - margin_px) / half_up : 1;
   camera.px_per_mm = std::min(fit_x, fit_y);
   return camera;
+}
+
+Camera camera_for(const TriangleMesh& mesh, double azimuth_degrees, double elevation_degrees, int width,
+                  int height, double margin_px) {
+  Camera camera =
+      camera_at({-1, -1, -1}, {1, 1, 1}, azimuth_degrees, elevation_degrees, width, height, margin_px);
+  if (mesh.vertices_mm.empty()) return camera;
+  constexpr double far = std::numeric_limits<double>::infinity();
+  Vec3 low{far, far, far}, high{-far, -far, -far};  // along right, up, toward
+  for (const auto& v : mesh.vertices_mm) {
+    const Vec3 p{v[0], v[1], v[2]};
+    const Vec3 seen{dot(p, camera.right), dot(p, camera.up), dot(p, camera.toward)};
+    for (std::size_t a = 0; a < 3; ++a) {
+      low[a] = std::min(low[a], seen[a]);
+      high[a] = std::max(high[a], seen[a]);
+    }
+  }
+  const Vec3 middle = 0.5 * (low + high);
+  camera.centre_mm = middle[0] * camera.right + middle[1] * camera.up + middle[2] * camera.toward;
+  const double wide = high[0] - low[0], tall = high[1] - low[1];
+  camera.px_per_mm = std::min(wide > 0 ? (width - 2 * margin_px) / wide : far,
+                              tall > 0 ? (height - 2 * margin_px) / tall : far);
+  if (!std::isfinite(camera.px_per_mm)) camera.px_per_mm = 1;
+  return camera;
+}
+
+bool SceneRender::hides(const Vec3& mm, double tolerance_mm) const {
+  const Vec3 p = fine_.project(mm);
+  if (!(p[0] >= 0 && p[0] < fine_.width && p[1] >= 0 && p[1] < fine_.height)) return false;
+  const std::size_t at =
+      static_cast<std::size_t>(p[1]) * static_cast<std::size_t>(fine_.width) + static_cast<std::size_t>(p[0]);
+  return static_cast<double>(height_[at]) > p[2] + tolerance_mm;
 }
 
 SceneRender::SceneRender(const Camera& camera, const Rgb& background)

@@ -29,6 +29,10 @@ struct Camera {
 Camera camera_at(const Vec3& min_mm, const Vec3& max_mm, double azimuth_degrees, double elevation_degrees,
                  int width, int height, double margin_px);
 
+// The same, filled by the mesh itself.
+Camera camera_for(const TriangleMesh& mesh, double azimuth_degrees, double elevation_degrees, int width,
+                  int height, double margin_px);
+
 // A scene of solid and glass-like bodies over a background.
 class SceneRender {
  public:
@@ -42,6 +46,9 @@ class SceneRender {
   // Clear where seen square on, denser at grazing sight: edges and outlines show, what lies inside stays
   // visible.
   void add_glass(const TriangleMesh& mesh);
+
+  // True when a solid stands before the point by more than the tolerance.
+  bool hides(const Vec3& mm, double tolerance_mm) const;
 
   // RGB, row by row, camera.width x camera.height. Solid bodies are seen through the glass before and behind
   // them.

@@ -134,7 +134,7 @@ void paint_arrow(QPainter& painter, const QPointF& from, const QPointF& to) {
 // A line across the wall with its arrows from outside and its length.
 void paint_wall(QPainter& painter, const Frame& f, const SlicePlan& plan, const EvidencePlace& place) {
   const auto u = static_cast<std::size_t>(f.window.u_axis()), v = static_cast<std::size_t>(f.window.v_axis());
-  const QPointF a(f.x(plan.index[u]), f.y(plan.index[v]));
+  const QPointF a(f.x(plan.wall_from_index[u]), f.y(plan.wall_from_index[v]));
   const QPointF b(f.x((*plan.wall_index)[u]), f.y((*plan.wall_index)[v]));
   const QPointF d = b - a;
   const double l = std::hypot(d.x(), d.y());

@@ -8,9 +8,9 @@ namespace halfmark {
 
 namespace {
 
-// The window is this many times the place's extent, so that its neighbourhood is seen, and never fewer voxels
-// than a picture needs to be read as one.
-constexpr double window_per_extent = 4;
+// The window is four times a small place's extent, so that its neighbourhood is seen; a large place needs
+// less. It never has fewer voxels than a picture needs to be read as one.
+constexpr double window_per_extent = 4, window_per_large_extent = 2, window_beside_large_voxels = 24;
 constexpr double window_per_section = 1.25;
 constexpr double least_window_voxels = 28;
 // The frame leaves a little air around the place and is never too small to be seen.
@@ -117,6 +117,11 @@ SlicePlan plan_slice(const InspectionRun& run, const VolumeGeometry& g, const Ev
     if (const auto normal = normal_near(run.outer_surface, mm)) {
       plan.wall_index = g.mm_to_index(mm - place.wall_mm * *normal);
       wall_direction = *plan.wall_index - plan.index;
+      plan.wall_from_index = plan.index;
+      plan.index =
+          0.5 * (plan.index + *plan.wall_index);  // the middle of the wall is the middle of the picture
+      for (std::size_t a = 0; a < 3; ++a)
+        plan.index[a] = std::clamp(plan.index[a], 0.0, static_cast<double>(g.size[a] - 1));
     }
   }
   if (pore && place.section_axis < 0) extent = std::max(extent, pore->length_mm);
@@ -126,12 +131,16 @@ SlicePlan plan_slice(const InspectionRun& run, const VolumeGeometry& g, const Ev
   const auto index = std::clamp<std::int64_t>(std::llround(plan.index[static_cast<std::size_t>(axis)]), 0,
                                               g.size[static_cast<std::size_t>(axis)] - 1);
   plan.overview = whole_slice(g, axis, index);
-  const double share = place.section_axis >= 0 ? window_per_section : window_per_extent;
+  const double window =
+      place.section_axis >= 0
+          ? window_per_section * extent
+          : std::min(window_per_extent * extent,
+                     window_per_large_extent * extent + window_beside_large_voxels * g.voxel_mm());
   // A section without a window of its own has no extent: it is shown whole.
   const bool whole = place.section_axis >= 0 && extent <= 0;
-  plan.detail = whole ? plan.overview
-                      : around(plan.overview, g, plan.index,
-                               std::max(share * extent, least_window_voxels * g.voxel_mm()));
+  plan.detail =
+      whole ? plan.overview
+            : around(plan.overview, g, plan.index, std::max(window, least_window_voxels * g.voxel_mm()));
   const double area = static_cast<double>(plan.detail.width() * plan.detail.height());
   plan.has_overview =
       area < almost_whole * static_cast<double>(plan.overview.width() * plan.overview.height());

@@ -11,9 +11,10 @@ namespace halfmark {
 
 struct SlicePlan {
   SliceWindow detail, overview;
-  Vec3 index{};                    // the place in voxels
+  Vec3 index{};                    // the middle of the picture's place, voxels
   Vec3 half_mm{};                  // half of the frame around it along the voxel axes
-  std::optional<Vec3> wall_index;  // the wall's far side, for a line across it
+  Vec3 wall_from_index{};          // a wall's near side ...
+  std::optional<Vec3> wall_index;  // ... and its far side, for a line across it
   bool has_overview = true;
 };
 
