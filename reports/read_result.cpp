@@ -65,15 +65,40 @@ VolumeText read_volume(const JsonPlace& place) {
   return v;
 }
 
+// A result is read where it lies, without the mesh files of its spec, which parse_spec asks for: mesh zones
+// become plain ones while the spec is parsed. Returns their files by zone.
+std::map<std::string, std::string> without_meshes(Json& spec) {
+  std::map<std::string, std::string> files;
+  if (!spec.is_object() || !spec.contains("zones") || !spec["zones"].is_array()) return files;
+  for (Json& zone : spec["zones"]) {
+    if (!zone.is_object() || zone.value("shape", Json()) != "mesh") continue;
+    const Json id = zone.value("id", Json()), file = zone.value("file", Json());
+    if (!id.is_string() || !file.is_string()) continue;
+    files[id.get<std::string>()] = file.get<std::string>();
+    zone["shape"] = "everything";
+    zone.erase("file");
+  }
+  return files;
+}
+
 InspectionSpec read_spec_part(const JsonPlace& place, const fs::path& folder) {
   const JsonPlace content = place.at("content");
+  Json text = content.json();
+  const std::map<std::string, std::string> meshes = without_meshes(text);
   InspectionSpec spec;
   try {
-    spec = parse_spec(content.json().dump(), folder);
+    spec = parse_spec(text.dump(), folder);
   } catch (const Problem& problem) {
     content.fail(problem.what());
   }
-  spec.file = place.at("file").text();
+  for (ZoneSpec& zone : spec.zones) {
+    const auto mesh = meshes.find(zone.id);
+    if (mesh == meshes.end()) continue;
+    zone.shape = ZoneShape::mesh;
+    zone.file = folder / mesh->second;
+  }
+  const std::string name = place.at("file").text();
+  if (!name.empty()) spec.file = folder / fs::path(name).filename();
   spec.sha256 = place.at("sha256").text();
   return spec;
 }

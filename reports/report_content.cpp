@@ -56,7 +56,7 @@ Section requirement_section(const Inspection& in, const std::vector<EvidencePlac
   table.header = {
       text_cell("No."),      text_cell("Requirement"), number_cell("Limit"), number_cell("Measured ± U"),
       number_cell("Margin"), text_cell("Place"),       text_cell("Verdict")};
-  table.shares = {0.06, 0.275, 0.15, 0.18, 0.13, 0.07, 0.135};
+  table.shares = {0.05, 0.255, 0.15, 0.205, 0.135, 0.065, 0.14};
   double factor = 2;
   for (std::size_t i = 0; i < in.requirements.size(); ++i) {
     const RequirementResult& r = in.requirements[i];

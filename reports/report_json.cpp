@@ -40,10 +40,18 @@ Json volume_json(const VolumeText& v) {
   return json;
 }
 
-// The spec itself, with the files of mesh zones by name only.
+// A mesh zone's file as seen from the spec's folder; its name alone when it lies elsewhere.
+std::filesystem::path plain_path(const InspectionSpec& spec, const std::filesystem::path& file) {
+  const std::filesystem::path below = file.lexically_relative(spec.file.parent_path());
+  const bool outside = below.empty() || *below.begin() == "..";
+  return outside ? (file.is_absolute() ? file.filename() : file) : below;
+}
+
 Json spec_json(const InspectionSpec& spec) {
   InspectionSpec plain = spec;
-  for (ZoneSpec& zone : plain.zones) zone.file = zone.file.filename();
+  plain.file.clear();
+  for (ZoneSpec& zone : plain.zones)
+    if (zone.shape == ZoneShape::mesh) zone.file = plain_path(spec, zone.file);
   Json json;
   json["file"] = file_name_of(spec.file.string());
   json["sha256"] = spec.sha256;

@@ -18,7 +18,7 @@ const TextStyle small{7.8, false, soft_ink, 1.35}, table_text{8.2, false, ink, 1
 constexpr int resolution = 600;
 constexpr double gap = 12, cell_gap = 7;
 // A picture is no taller than this, so that its words stay on its page.
-constexpr double tallest_picture = 262;
+constexpr double tallest_picture = 240;
 
 class PdfReport {
  public:

@@ -153,6 +153,7 @@ inline InspectionRun run(const VolumeSource& source) {
   in.requirements.back().evidence = {2, balls()[1].centre_mm, 0.7, "pore 2"};
   in.requirements.back().warnings = {"the limit lies close to what this scan can show"};
   in.requirements.push_back(requirement("R3", Quantity::pore_count, 10, 3, 0, Verdict::accept));
+  for (const RequirementResult& r : in.requirements) in.spec.requirements.push_back(r.requirement);
   in.settings = {{"pores.method", "local"}, {"pores.min_voxels", "8"}};
   in.not_searched = {"Voids thinner than one voxel (0.1 mm) cannot be seen."};
   in.warnings = {"the part is small"};
