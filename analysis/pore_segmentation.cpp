@@ -316,7 +316,7 @@ PoreField join_fields(const std::vector<const Found*>& found,
   PoreField out;
   out.windows = RunLabels(size);
   out.labels = RunLabels(size);
-  std::vector<std::size_t> at(found.size(), 0), unused(found.size(), 0);
+  std::vector<std::size_t> at(found.size()), unused(found.size());
   for (std::int64_t z = 0; z < size[2]; ++z) {
     for (std::int64_t y = 0; y < size[1]; ++y) {
       std::vector<LabelRun> runs;
