@@ -1,7 +1,7 @@
 // How the surface is found
 //
 // Which voxels are inside is known already, from the part map; the grey values only say where along the edge
-// between an inside and an outside voxel the ISO-50 level is crossed (linear interpolation). So the inside is
+// between an inside and an outside voxel the ISO-50 level is crossed (edge_crossing.h). So the inside is
 // unpacked to bits, 64 voxels a word, plain words are passed over, and voxels are read at the surface alone.
 // What is not inside counts as air whatever its grey value: debris leaves no trace; a filled pore none
 // either. Where the two greys do not enclose the level (the mouth of a filled open pore) the vertex lies half
@@ -26,6 +26,7 @@
 #include <string>
 #include <type_traits>
 
+#include "analysis/edge_crossing.h"
 #include "analysis/surface_cells.h"
 #include "analysis/voxel_rows.h"
 
@@ -49,6 +50,7 @@ struct Grid {
   const FieldOfView& field;
   const VolumeGeometry& geometry;
   double threshold;
+  EdgeCrossing crossing;
   bool open_at_padding;  // cells that reach out of the field of view are left out
   std::int64_t margin;
   std::array<std::int64_t, 3> size;  // with the margin
@@ -201,7 +203,7 @@ class SlabSurface {
     const double in = grey(from_inside ? from : to), out = grey(from_inside ? to : from);
     double share = 0.5;  // of the edge, from the inside voxel
     if (in >= grid_.threshold && out < grid_.threshold && in_field(from_inside ? to : from)) {
-      share = std::clamp((in - grid_.threshold) / (in - out), least_share, 1 - least_share);
+      share = std::clamp(grid_.crossing.share(in, out), least_share, 1 - least_share);
     }
     Vec3 index;
     for (std::size_t a = 0; a < 3; ++a) index[a] = grid_.coordinate(a, from[a]);
@@ -341,8 +343,16 @@ Grid grid_of(const VolumeSource& source, const FieldOfView& field, const GreyLev
   const auto& d = geometry.direction;
   const double determinant = d[0] * (d[4] * d[8] - d[5] * d[7]) - d[1] * (d[3] * d[8] - d[5] * d[6]) +
                              d[2] * (d[3] * d[7] - d[4] * d[6]);
-  Grid grid{inside, field, geometry, levels.threshold, !options.close_at_border && !field.whole(),
-            margin, {},    0,        determinant < 0};
+  Grid grid{inside,
+            field,
+            geometry,
+            levels.threshold,
+            EdgeCrossing(levels.threshold, levels.contrast()),
+            !options.close_at_border && !field.whole(),
+            margin,
+            {},
+            0,
+            determinant < 0};
   for (std::size_t a = 0; a < 3; ++a) grid.size[a] = geometry.size[a] + 2 * margin;
   grid.words = (grid.size[0] + word_bits - 1) / word_bits;
   return grid;

@@ -1,5 +1,5 @@
-// The ISO-50 surface of the part as triangles, vertices on voxel edges by linear interpolation of the grey
-// values, ordered by (z, y, x, edge). Area and volume from it.
+// The ISO-50 surface of the part as triangles, vertices on voxel edges where the grey values of a blurred edge
+// cross the level (edge_crossing.h), ordered by (z, y, x, edge). Area and volume from it.
 #pragma once
 
 #include "analysis/grey_levels.h"
@@ -11,8 +11,8 @@ namespace halfmark {
 struct SurfaceOptions {
   bool fill_pores =
       false;  // true: only the part's own outer surface, pores filled (walls are measured on it)
-  // Open at the field's border when false; closed by flat caps there when true (volume needs a closed
-  // surface).
+  // Open at the field's border when false; closed there when true, by flat caps half a voxel beyond the last
+  // voxel centres (volume needs a closed surface; walls an open one).
   bool close_at_border = true;
 };
 

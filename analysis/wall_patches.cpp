@@ -16,9 +16,11 @@ namespace halfmark {
 
 namespace {
 
-constexpr double least_wall_share = 0.8;
-// At the border of a zone or of the surface a patch may be cut down to this share of its area.
-constexpr double least_area_share = 0.5;
+struct Room {
+  double wall_share;  // least share of the patch that is wall
+  double area_share;  // least share of its area left at the border of a zone or of the surface
+};
+constexpr Room enough{0.8, 0.5}, cramped{0.0, 0.0};
 constexpr float same_side_cosine = 0.5F;
 // Centres are first tried this share of the radius apart ...
 constexpr double centre_step_in_radii = 1.0 / 3;
@@ -104,7 +106,7 @@ class PatchMeans {
   }
 
   // False if the patch does not count.
-  bool mean(std::uint32_t centre, double& mean_mm) const {
+  bool mean(std::uint32_t centre, const Room& room, double& mean_mm) const {
     const P &p = mesh_.vertices_mm[centre], &n = normals_[centre];
     double all = 0, wall = 0, sum = 0;
     cubes_.for_near(p, [&](std::uint32_t v) {
@@ -115,20 +117,20 @@ class PatchMeans {
       wall += areas_[v];
       sum += static_cast<double>(areas_[v]) * static_cast<double>(walls_.thickness_mm[v]);
     });
-    if (!(wall > 0) || wall < least_wall_share * all) return false;
-    if (all < least_area_share * std::numbers::pi * static_cast<double>(radius2_) && all > areas_[centre])
+    if (!(wall > 0) || wall < room.wall_share * all) return false;
+    if (all < room.area_share * std::numbers::pi * static_cast<double>(radius2_) && all > areas_[centre])
       return false;
     mean_mm = sum / wall;
     return true;
   }
 
-  std::vector<Patch> at(const std::vector<std::uint32_t>& centres) const {
+  std::vector<Patch> at(const std::vector<std::uint32_t>& centres, const Room& room) const {
     std::vector<Patch> patches(centres.size());
     std::vector<std::uint8_t> good(centres.size(), 0);
     tbb::parallel_for(std::size_t{0}, (centres.size() + block - 1) / block, [&](std::size_t b) {
       for (std::size_t i = b * block; i < std::min((b + 1) * block, centres.size()); ++i) {
         patches[i].centre = centres[i];
-        good[i] = may_be_centre(centres[i]) && mean(centres[i], patches[i].mean_mm);
+        good[i] = may_be_centre(centres[i]) && mean(centres[i], room, patches[i].mean_mm);
       }
     });
     std::size_t kept = 0;
@@ -190,7 +192,8 @@ std::vector<Patch> wall_patches(const TriangleMesh& mesh, const WallMap& walls,
     centres.push_back(wall[i]);
   centres.insert(centres.end(), also_at.begin(), also_at.end());
   sort_unique(centres);
-  std::vector<Patch> patches = means.at(centres);
+  std::vector<Patch> patches = means.at(centres, enough);
+  if (patches.empty()) return means.at(centres, cramped);
 
   std::vector<Patch> thin = patches;
   std::sort(thin.begin(), thin.end(), [](const Patch& a, const Patch& b) {
@@ -202,7 +205,7 @@ std::vector<Patch> wall_patches(const TriangleMesh& mesh, const WallMap& walls,
   sort_unique(more);
   std::vector<std::uint32_t> added;
   std::set_difference(more.begin(), more.end(), centres.begin(), centres.end(), std::back_inserter(added));
-  const std::vector<Patch> refined = means.at(added);
+  const std::vector<Patch> refined = means.at(added, enough);
   patches.insert(patches.end(), refined.begin(), refined.end());
   std::sort(patches.begin(), patches.end(),
             [](const Patch& a, const Patch& b) { return a.centre < b.centre; });

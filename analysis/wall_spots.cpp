@@ -153,6 +153,7 @@ WallSummary summarise_walls(const TriangleMesh& mesh, const WallMap& walls, cons
   summary.any_wall = true;
   summary.least_mm.value = least->mean_mm;
   summary.least_mm.standard_uncertainty = walls.standard_uncertainty_mm;
+  summary.least_mm.contributions = walls.contributions;
   const auto& p = mesh.vertices_mm[least->centre];
   summary.least_position_mm = {p[0], p[1], p[2]};
   summary.spots = thin_spots(mesh, std::move(places), patches, below, max_spots);

@@ -1,6 +1,7 @@
 // Wall thickness by the largest inscribed sphere that covers a place (Hildebrand & Rueegsegger 1997), on
 // distances to the sub-voxel surface. Places whose sphere touches two sides at least 120 degrees apart are
-// walls; edges and corners are not.
+// walls; edges and corners are not. Measure on a surface that is open at the field's border: what is cut
+// there is no wall.
 #pragma once
 
 #include <string>
@@ -16,10 +17,11 @@ namespace halfmark {
 
 struct WallMap {
   // Per vertex of the mesh it was measured on.
-  std::vector<float> thickness_mm;     // capped at WallSpec::max_mm
-  std::vector<std::uint8_t> is_wall;   // 1: touches two sides >= 120 degrees apart
-  std::vector<std::uint8_t> at_cap;    // 1: the wall is max_mm or more
-  double standard_uncertainty_mm = 0;  // of one place's thickness
+  std::vector<float> thickness_mm;          // capped at WallSpec::max_mm
+  std::vector<std::uint8_t> is_wall;        // 1: touches two sides >= 120 degrees apart
+  std::vector<std::uint8_t> at_cap;         // 1: the wall is max_mm or more
+  double standard_uncertainty_mm = 0;       // of one place's thickness
+  std::vector<Contribution> contributions;  // that it is made of, mm
   std::vector<std::string> warnings;
 };
 
