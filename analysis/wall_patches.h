@@ -15,7 +15,8 @@ struct Patch {
 
 // Patches of patch_mm2 (a circle's area) that are at least four fifths wall, by rising centre. areas: of each
 // vertex, mm^2. in_zone: per vertex, empty for all; what lies outside is no part of a patch. also_at:
-// vertices to be tried as centres beside those chosen.
+// vertices to be tried as centres beside those chosen. Where no patch has room (a wall lower than a patch is
+// wide) all count that hold a wall.
 std::vector<Patch> wall_patches(const TriangleMesh& mesh, const WallMap& walls,
                                 const std::vector<float>& areas_mm2, const std::vector<std::uint8_t>& in_zone,
                                 double patch_mm2, const std::vector<std::uint32_t>& also_at = {});
