@@ -44,6 +44,11 @@ std::array<float, 3> area_vector(const Points& p, const std::array<std::uint32_t
           0.5F * (u[0] * v[1] - u[1] * v[0])};
 }
 
+void make_unit(std::array<float, 3>& n) {
+  const float length = std::sqrt(n[0] * n[0] + n[1] * n[1] + n[2] * n[2]);
+  for (float& c : n) c = length > 0 ? c / length : 0;
+}
+
 }  // namespace
 
 VertexNeighbours::VertexNeighbours(const TriangleMesh& mesh) {
@@ -78,11 +83,22 @@ Points vertex_normals(const Points& vertices, const TriangleMesh& mesh) {
       for (std::size_t a = 0; a < 3; ++a) normals[v][a] += area[a];
     }
   }
-  for_blocks(normals.size(), [&](std::size_t v) {
-    auto& n = normals[v];
-    const float length = std::sqrt(n[0] * n[0] + n[1] * n[1] + n[2] * n[2]);
-    for (float& c : n) c = length > 0 ? c / length : 0;
-  });
+  for_blocks(normals.size(), [&](std::size_t v) { make_unit(normals[v]); });
+  return normals;
+}
+
+Points averaged_normals(Points normals, const VertexNeighbours& neighbours, int passes) {
+  Points next(normals.size());
+  for (int i = 0; i < passes; ++i) {
+    for_blocks(normals.size(), [&](std::size_t v) {
+      next[v] = normals[v];
+      for (const std::uint32_t n : neighbours.of(v)) {
+        for (std::size_t a = 0; a < 3; ++a) next[v][a] += normals[n][a];
+      }
+      make_unit(next[v]);
+    });
+    std::swap(normals, next);
+  }
   return normals;
 }
 

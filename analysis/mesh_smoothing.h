@@ -36,6 +36,9 @@ Points smoothed_vertices(const TriangleMesh& mesh, const VertexNeighbours& neigh
 // Unit normals at the vertices, outwards, weighted by triangle area; {0, 0, 0} where there is no triangle.
 Points vertex_normals(const Points& vertices, const TriangleMesh& mesh);
 
+// Each normal averaged with its neighbours', `passes` times over; unit length.
+Points averaged_normals(Points normals, const VertexNeighbours& neighbours, int passes);
+
 // A third of the area of the triangles about each vertex, mm^2; the sum over all is the mesh's area.
 std::vector<float> vertex_areas_mm2(const TriangleMesh& mesh);
 

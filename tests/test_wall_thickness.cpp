@@ -303,7 +303,7 @@ TEST_CASE("walls of max_mm and more are at the cap, balls and rods are walls") {
   // Blur moves the level of a rod inwards by sigma^2 / 2R, chords and the least of many touches add to it.
   CHECK(d.mean > -0.5);
   CHECK(d.mean < 0.1);
-  CHECK(d.wall_share > 0.85);
+  CHECK(d.wall_share > 0.98);
 }
 
 TEST_CASE("no surface, no walls") {
