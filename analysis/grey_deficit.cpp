@@ -3,6 +3,7 @@
 #include <algorithm>
 #include <cmath>
 #include <cstdint>
+#include <cstring>
 #include <type_traits>
 
 #include "analysis/wide_registers.h"
@@ -16,15 +17,58 @@ constexpr double band_widths = 3.5;
 // Nearer to the face than this coverage (1.9 edge widths) a dent of the face and a pore cannot be told apart.
 constexpr float least_coverage = 0.97f;
 
-HALFMARK_FOR_WIDE_REGISTERS
-void add_pair(float* out, const float* a, const float* b, float weight, std::int64_t count) {
-  for (std::int64_t x = 0; x < count; ++x) out[x] += weight * (a[x] + b[x]);
+// Beyond this reach a kernel's taps are taken in a loop of its own length.
+constexpr std::int64_t most_fixed_taps = 6;
+
+// out = weights[0] rows[reach] + sum over k of weights[k] (rows[reach - k] + rows[reach + k]), in one pass.
+template <std::int64_t fixed_reach>
+__attribute__((always_inline)) inline void weigh(float* out, const float* const* rows, const float* weights,
+                                                 std::int64_t reach, std::int64_t count) {
+  if constexpr (fixed_reach > 0) reach = fixed_reach;
+  for (std::int64_t x = 0; x < count; ++x) {
+    float sum = weights[0] * rows[reach][x];
+    for (std::int64_t k = 1; k <= reach; ++k) sum += weights[k] * (rows[reach - k][x] + rows[reach + k][x]);
+    out[x] = sum;
+  }
 }
 
 HALFMARK_FOR_WIDE_REGISTERS
-void scale_row(float* out, const float* in, float weight, std::int64_t count) {
-  for (std::int64_t x = 0; x < count; ++x) out[x] = weight * in[x];
+void weigh_rows(float* __restrict out, const float* const* rows, const float* weights, std::int64_t reach,
+                std::int64_t count) {
+  switch (reach) {
+    case 1:
+      return weigh<1>(out, rows, weights, reach, count);
+    case 2:
+      return weigh<2>(out, rows, weights, reach, count);
+    case 3:
+      return weigh<3>(out, rows, weights, reach, count);
+    case 4:
+      return weigh<4>(out, rows, weights, reach, count);
+    case 5:
+      return weigh<5>(out, rows, weights, reach, count);
+    case most_fixed_taps:
+      return weigh<most_fixed_taps>(out, rows, weights, reach, count);
+    default:
+      return weigh<0>(out, rows, weights, reach, count);
+  }
 }
+
+template <class T>
+__attribute__((always_inline)) inline void convert(float* __restrict out, const T* __restrict in,
+                                                   std::int64_t count) {
+  for (std::int64_t x = 0; x < count; ++x) out[x] = static_cast<float>(in[x]);
+}
+
+// One function a voxel type: the mark for wide registers wants no templates.
+HALFMARK_FOR_WIDE_REGISTERS
+void to_floats(float* out, const std::uint8_t* in, std::int64_t count) { convert(out, in, count); }
+HALFMARK_FOR_WIDE_REGISTERS
+void to_floats(float* out, const std::int8_t* in, std::int64_t count) { convert(out, in, count); }
+HALFMARK_FOR_WIDE_REGISTERS
+void to_floats(float* out, const std::uint16_t* in, std::int64_t count) { convert(out, in, count); }
+HALFMARK_FOR_WIDE_REGISTERS
+void to_floats(float* out, const std::int16_t* in, std::int64_t count) { convert(out, in, count); }
+void to_floats(float* out, const float* in, std::int64_t count) { std::copy(in, in + count, out); }
 
 HALFMARK_FOR_WIDE_REGISTERS
 void deficits_of(float* grey_to_deficit, const float* level, float air, std::int64_t count) {
@@ -41,6 +85,17 @@ void mark_border(std::uint8_t* border, const std::uint8_t* row, std::int64_t cou
     border[x] = static_cast<std::uint8_t>((f ^ row[x - 1]) | (f ^ row[x + 1]) | (f ^ above[x]) |
                                           (f ^ below[x]) | (f ^ before[x]) | (f ^ after[x]));
   }
+}
+
+// The first place in [from, end) with a flag that is not zero; end if there is none.
+std::int64_t next_marked(const std::uint8_t* flags, std::int64_t from, std::int64_t end) {
+  std::uint64_t eight = 0;
+  for (; from + 8 <= end; from += 8) {
+    std::memcpy(&eight, flags + from, sizeof eight);
+    if (eight != 0) break;
+  }
+  while (from < end && flags[from] == 0) ++from;
+  return from;
 }
 
 HALFMARK_FOR_WIDE_REGISTERS
@@ -100,37 +155,34 @@ std::vector<float> half_gaussian(double sigma, double reach) {
 void smooth_block(std::vector<float>& values, const VoxelBox& box,
                   const std::array<std::vector<float>, 3>& kernel, std::vector<float>& line) {
   const std::int64_t nx = box.extent(0), ny = box.extent(1), nz = box.extent(2);
-  // Along x: each row through a padded copy.
-  const auto rx = static_cast<std::int64_t>(kernel[0].size()) - 1;
-  line.resize(static_cast<std::size_t>(std::max({nx + 2 * rx, nx * ny, nx * nz})));
-  for (std::int64_t r = 0; r < ny * nz; ++r) {
-    float* row = values.data() + r * nx;
-    std::copy(row, row + nx, line.data() + rx);
-    std::fill(line.data(), line.data() + rx, row[0]);
-    std::fill(line.data() + rx + nx, line.data() + nx + 2 * rx, row[nx - 1]);
-    scale_row(row, line.data() + rx, kernel[0][0], nx);
-    for (std::int64_t k = 1; k <= rx; ++k)
-      add_pair(row, line.data() + rx - k, line.data() + rx + k, kernel[0][static_cast<std::size_t>(k)], nx);
+  std::array<std::int64_t, 3> reach;
+  for (std::size_t a = 0; a < 3; ++a) reach[a] = static_cast<std::int64_t>(kernel[a].size()) - 1;
+  const std::int64_t taps = 2 * std::max({reach[0], reach[1], reach[2]}) + 1;
+  std::vector<const float*> rows(static_cast<std::size_t>(taps));
+  line.resize(values.size());
+  float* const first = values.data();
+  float* const second = line.data();
+  const auto row = [&](float* of, std::int64_t y, std::int64_t z) { return of + (z * ny + y) * nx; };
+  // Along x into `second`, y back into `values`, z into `second`: what the later axes do not need is left.
+  for (std::int64_t r = 0; r < ny * nz && nx > 2 * reach[0]; ++r) {
+    for (std::int64_t k = 0; k <= 2 * reach[0]; ++k) rows[static_cast<std::size_t>(k)] = first + r * nx + k;
+    weigh_rows(second + r * nx + reach[0], rows.data(), kernel[0].data(), reach[0], nx - 2 * reach[0]);
   }
-  // Along y, then z: whole rows at a time, the source rows kept aside.
-  for (const std::size_t axis : {std::size_t{1}, std::size_t{2}}) {
-    const auto reach = static_cast<std::int64_t>(kernel[axis].size()) - 1;
-    const std::int64_t count = axis == 1 ? ny : nz, lines = axis == 1 ? nz : ny;
-    const std::int64_t stride = axis == 1 ? nx : nx * ny, next = axis == 1 ? nx * ny : nx;
-    for (std::int64_t l = 0; l < lines; ++l) {
-      float* first = values.data() + l * next;
-      for (std::int64_t i = 0; i < count; ++i) std::copy_n(first + i * stride, nx, line.data() + i * nx);
-      for (std::int64_t i = 0; i < count; ++i) {
-        float* row = first + i * stride;
-        scale_row(row, line.data() + i * nx, kernel[axis][0], nx);
-        for (std::int64_t k = 1; k <= reach; ++k) {
-          add_pair(row, line.data() + std::max<std::int64_t>(i - k, 0) * nx,
-                   line.data() + std::min(i + k, count - 1) * nx, kernel[axis][static_cast<std::size_t>(k)],
-                   nx);
-        }
-      }
+  for (std::int64_t z = 0; z < nz; ++z) {
+    for (std::int64_t y = reach[1]; y < ny - reach[1]; ++y) {
+      for (std::int64_t k = 0; k <= 2 * reach[1]; ++k)
+        rows[static_cast<std::size_t>(k)] = row(second, y - reach[1] + k, z);
+      weigh_rows(row(first, y, z), rows.data(), kernel[1].data(), reach[1], nx);
     }
   }
+  for (std::int64_t z = reach[2]; z < nz - reach[2]; ++z) {
+    for (std::int64_t y = reach[1]; y < ny - reach[1]; ++y) {
+      for (std::int64_t k = 0; k <= 2 * reach[2]; ++k)
+        rows[static_cast<std::size_t>(k)] = row(first, y, z - reach[2] + k);
+      weigh_rows(row(second, y, z), rows.data(), kernel[2].data(), reach[2], nx);
+    }
+  }
+  std::swap(values, line);
 }
 
 GreyDeficit::GreyDeficit(const VolumeSource& source, const FieldOfView& field, const GreyLevels& levels,
@@ -183,12 +235,13 @@ bool GreyDeficit::fill(const VoxelBox& box, const GreyPlanes& planes, DeficitBlo
 // The share of each voxel that lies inside: 1 and 0 by the mask, sub-voxel at its border from the edge's grey
 // value.
 template <class T>
-void GreyDeficit::cover_border(const GreyPlanes& planes, const VoxelBox& box,
-                               std::vector<float>& coverage) const {
+void GreyDeficit::cover_border(const GreyPlanes& planes, const VoxelBox& box, DeficitBlock& block) const {
+  std::vector<float>& coverage = block.coverage;
   const auto& size = source_.geometry().size;
   const std::int64_t nx = box.extent(0), ny = box.extent(1), nz = box.extent(2);
   coverage.assign(static_cast<std::size_t>(nx * ny * nz), 0);
-  std::vector<std::uint8_t> flags(coverage.size(), 0);
+  std::vector<std::uint8_t>& flags = block.flags;
+  flags.assign(coverage.size(), 0);
   std::vector<Content> rows(static_cast<std::size_t>(ny * nz), Content::none);
   const auto clamped = [&](std::int64_t v, std::size_t a) {
     return std::clamp<std::int64_t>(v, 0, size[a] - 1);
@@ -229,9 +282,10 @@ void GreyDeficit::cover_border(const GreyPlanes& planes, const VoxelBox& box,
         continue;
       const std::uint8_t* row = flags.data() + r * nx;
       mark_border(border.data(), row, nx, nx * ny);
-      for (std::int64_t x = 1; x + 1 < nx; ++x) {
+      for (std::int64_t x = next_marked(border.data(), 1, nx - 1); x + 1 < nx;
+           x = next_marked(border.data(), x + 1, nx - 1)) {
         const std::int64_t gx = box.begin[0] + x;
-        if (border[static_cast<std::size_t>(x)] == 0 || gx < 0 || gx >= size[0]) continue;
+        if (gx < 0 || gx >= size[0]) continue;
         const double grey = static_cast<double>(greys[((gz - planes.z_begin) * size[1] + gy) * size[0] + gx]);
         // A border voxel whose grey contradicts its flag belongs to a mouth or to rough ground: the mask
         // decides.
@@ -255,7 +309,7 @@ void GreyDeficit::fill_typed(const GreyPlanes& planes, DeficitBlock& block) cons
   VoxelBox wide = box;
   if (!block.deep) {
     wide = box.grown(band_);
-    cover_border<T>(planes, wide, block.coverage);
+    cover_border<T>(planes, wide, block);
     smooth_block(block.coverage, wide, kernel_, block.line);
     coverage = block.coverage.data();
   }
@@ -266,18 +320,19 @@ void GreyDeficit::fill_typed(const GreyPlanes& planes, DeficitBlock& block) cons
                      x1 = std::clamp<std::int64_t>(box.end[0], 0, size[0]);
   for (std::int64_t z = 0; z < nz; ++z) {
     const std::int64_t gz = std::clamp<std::int64_t>(box.begin[2] + z, planes.z_begin, planes.z_end - 1);
+    const MaterialLevel::Plane level_plane = level_.plane(gz);
     for (std::int64_t y = 0; y < ny; ++y) {
       const std::int64_t gy = std::clamp<std::int64_t>(box.begin[1] + y, 0, size[1] - 1);
       float* out = block.deficit.data() + (z * ny + y) * nx;
       std::uint8_t* usable = block.usable.data() + (z * ny + y) * nx;
       const T* row = greys + ((gz - planes.z_begin) * size[1] + gy) * size[0];
-      level_.row(gy, gz, x0, x1, level.data() + (x0 - box.begin[0]));
+      level_plane.row(gy, x0, x1, level.data() + (x0 - box.begin[0]));
       for (std::int64_t x = 0; x < x0 - box.begin[0]; ++x)
         level[static_cast<std::size_t>(x)] = level[static_cast<std::size_t>(x0 - box.begin[0])];
       for (std::int64_t x = x1 - box.begin[0]; x < nx; ++x)
         level[static_cast<std::size_t>(x)] = level[static_cast<std::size_t>(x1 - 1 - box.begin[0])];
       for (std::int64_t x = 0; x < x0 - box.begin[0]; ++x) out[x] = static_cast<float>(row[x0]);
-      for (std::int64_t x = x0; x < x1; ++x) out[x - box.begin[0]] = static_cast<float>(row[x]);
+      to_floats(out + (x0 - box.begin[0]), row + x0, x1 - x0);
       for (std::int64_t x = x1 - box.begin[0]; x < nx; ++x) out[x] = static_cast<float>(row[x1 - 1]);
       if (block.deep) {
         deficits_of(out, level.data(), air, nx);

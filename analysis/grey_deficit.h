@@ -38,6 +38,7 @@ struct DeficitBlock {
       usable;        // 1: inside the part, and far enough below its face or darker than ISO-50
   bool deep = true;  // every voxel inside and below the band
   std::vector<float> coverage, line;  // working memory
+  std::vector<std::uint8_t> flags;
 };
 
 // Planes of grey values that the deficit is taken from.
@@ -60,7 +61,7 @@ class GreyDeficit {
   template <class T>
   void fill_typed(const GreyPlanes& planes, DeficitBlock& block) const;
   template <class T>
-  void cover_border(const GreyPlanes& planes, const VoxelBox& box, std::vector<float>& coverage) const;
+  void cover_border(const GreyPlanes& planes, const VoxelBox& box, DeficitBlock& block) const;
 
   const VolumeSource& source_;
   const FieldOfView& field_;

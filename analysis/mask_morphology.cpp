@@ -128,6 +128,12 @@ void lowest_of(const RowWithCost* rows, std::size_t row_count, std::int64_t coun
   }
 }
 
+HALFMARK_FOR_WIDE_REGISTERS
+void mark_within(const std::int16_t* squares, std::int16_t limit, std::int64_t count,
+                 std::uint8_t* __restrict out) {
+  for (std::int64_t x = 0; x < count; ++x) out[x] = static_cast<std::uint8_t>(squares[x] <= limit ? 1 : 0);
+}
+
 // Working memory of one thread, kept between tiles.
 struct TileBuffers {
   std::vector<std::int16_t> along_x, along_xy, along_xyz;
@@ -197,8 +203,7 @@ void dilate_tile(const RunMask& mask, const Span3& tile, const Ball& ball, TileB
         std::memset(out, 0, static_cast<std::size_t>(nx));
         continue;
       }
-      for (std::int64_t x = 0; x < nx; ++x)
-        out[x] = buffers.along_xyz[static_cast<std::size_t>(x)] <= ball.limit;
+      mark_within(buffers.along_xyz.data(), ball.limit, nx, out);
     }
   }
 }

@@ -17,6 +17,7 @@
 #include <type_traits>
 
 #include "analysis/voxel_rows.h"
+#include "analysis/wide_registers.h"
 
 namespace halfmark {
 
@@ -65,18 +66,40 @@ struct MaterialLevel::Model {
   std::vector<double> coefficients;
   Vec3 middle{}, scale{1, 1, 1};  // normalised = (index - middle) * scale
 
-  // Coefficients of the powers of x along one row.
-  std::array<double, top_degree + 1> along_row(double y, double z) const {
+  // Coefficients of the powers of y and x in one plane.
+  std::array<std::array<double, top_degree + 1>, top_degree + 1> in_plane(double z) const {
+    std::array<std::array<double, top_degree + 1>, top_degree + 1> out{};
+    const auto pz = powers((z - middle[2]) * scale[2]);
+    for (std::size_t i = 0; i < terms.size(); ++i)
+      out[static_cast<std::size_t>(terms[i].y)][static_cast<std::size_t>(terms[i].x)] +=
+          coefficients[i] * pz[static_cast<std::size_t>(terms[i].z)];
+    return out;
+  }
+  // Coefficients of the powers of x along one row of it.
+  std::array<double, top_degree + 1> along_row(
+      const std::array<std::array<double, top_degree + 1>, top_degree + 1>& plane, double y) const {
     std::array<double, top_degree + 1> out{};
-    const auto py = powers((y - middle[1]) * scale[1]), pz = powers((z - middle[2]) * scale[2]);
-    for (std::size_t i = 0; i < terms.size(); ++i) {
-      out[static_cast<std::size_t>(terms[i].x)] += coefficients[i] *
-                                                   py[static_cast<std::size_t>(terms[i].y)] *
-                                                   pz[static_cast<std::size_t>(terms[i].z)];
+    const auto py = powers((y - middle[1]) * scale[1]);
+    for (std::size_t j = 0; j < py.size(); ++j) {
+      for (std::size_t i = 0; i < out.size(); ++i) out[i] += py[j] * plane[j][i];
     }
     return out;
   }
 };
+
+namespace {
+
+// out[i] = polynomial of degree 4 at start + i * step.
+HALFMARK_FOR_WIDE_REGISTERS
+void polynomial_row(const float* f, float start, float step, std::int64_t count, float* out) {
+  const float a = f[0], b = f[1], c = f[2], d = f[3], e = f[4];
+  for (std::int32_t i = 0; i < static_cast<std::int32_t>(count); ++i) {
+    const float x = start + static_cast<float>(i) * step;
+    out[i] = a + x * (b + x * (c + x * (d + x * e)));
+  }
+}
+
+}  // namespace
 
 MaterialLevel MaterialLevel::constant(double grey) {
   MaterialLevel out;
@@ -86,26 +109,34 @@ MaterialLevel MaterialLevel::constant(double grey) {
   return out;
 }
 
-void MaterialLevel::row(std::int64_t y, std::int64_t z, std::int64_t x_begin, std::int64_t x_end,
-                        float* out) const {
-  if (model->terms.empty()) {
-    std::fill(out, out + (x_end - x_begin), static_cast<float>(model->constant));
+MaterialLevel::Plane MaterialLevel::plane(std::int64_t z) const {
+  Plane out;
+  out.model_ = model.get();
+  if (!model->terms.empty()) out.terms_ = model->in_plane(static_cast<double>(z));
+  return out;
+}
+
+void MaterialLevel::Plane::row(std::int64_t y, std::int64_t x_begin, std::int64_t x_end, float* out) const {
+  if (model_->terms.empty()) {
+    std::fill(out, out + (x_end - x_begin), static_cast<float>(model_->constant));
     return;
   }
-  const auto c = model->along_row(static_cast<double>(y), static_cast<double>(z));
+  const auto c = model_->along_row(terms_, static_cast<double>(y));
   std::array<float, top_degree + 1> f{};
   for (std::size_t i = 0; i < f.size(); ++i) f[i] = static_cast<float>(c[i]);
-  const auto scale = static_cast<float>(model->scale[0]);
-  const auto start = static_cast<float>((static_cast<double>(x_begin) - model->middle[0]) * model->scale[0]);
-  for (std::int64_t i = 0; i < x_end - x_begin; ++i) {
-    const float x = start + static_cast<float>(i) * scale;
-    out[i] = f[0] + x * (f[1] + x * (f[2] + x * (f[3] + x * f[4])));
-  }
+  const auto start =
+      static_cast<float>((static_cast<double>(x_begin) - model_->middle[0]) * model_->scale[0]);
+  polynomial_row(f.data(), start, static_cast<float>(model_->scale[0]), x_end - x_begin, out);
+}
+
+void MaterialLevel::row(std::int64_t y, std::int64_t z, std::int64_t x_begin, std::int64_t x_end,
+                        float* out) const {
+  plane(z).row(y, x_begin, x_end, out);
 }
 
 double MaterialLevel::at(double x, double y, double z) const {
   if (model->terms.empty()) return model->constant;
-  const auto c = model->along_row(y, z);
+  const auto c = model->along_row(model->in_plane(z), y);
   const double v = (x - model->middle[0]) * model->scale[0];
   return c[0] + v * (c[1] + v * (c[2] + v * (c[3] + v * c[4])));
 }

@@ -4,7 +4,9 @@
 
 #include <algorithm>
 #include <array>
+#include <climits>
 #include <cmath>
+#include <cstdint>
 
 #include "analysis/mask_morphology.h"
 
@@ -29,6 +31,7 @@ struct VoxelIndex {
 
 struct Voxel {
   std::int32_t x, y, z;
+  float value;
   std::int64_t index;
 };
 
@@ -38,22 +41,69 @@ struct Tree {
   bool dropped = false;     // a bump of another's tail
 };
 
+// Boxes of at most this many voxels per voxel of the component are held as an array.
+constexpr std::int64_t dense_box_share = 64;
+
+// The trees of a component's voxels as an array over its box, one voxel of margin around, where that is not
+// much larger than the component itself.
+class DenseTrees {
+ public:
+  explicit DenseTrees(const std::vector<Voxel>& voxels) {
+    std::array<std::int32_t, 3> last{INT32_MIN, INT32_MIN, INT32_MIN};
+    for (const Voxel& v : voxels) {
+      const std::array<std::int32_t, 3> at{v.x, v.y, v.z};
+      for (std::size_t a = 0; a < 3; ++a) {
+        first_[a] = std::min(first_[a], at[a] - 1);
+        last[a] = std::max(last[a], at[a] + 1);
+      }
+    }
+    std::int64_t box = 1;
+    for (std::size_t a = 0; a < 3; ++a) {
+      extent_[a] = last[a] - first_[a] + 1;
+      box *= extent_[a];
+    }
+    if (box <= dense_box_share * static_cast<std::int64_t>(voxels.size()))
+      tree_.assign(static_cast<std::size_t>(box), 0);
+  }
+  bool in_use() const { return !tree_.empty(); }
+  void set(const Voxel& v, std::int32_t tree) { tree_[static_cast<std::size_t>(place(v))] = tree; }
+  // Calls f(tree) for every neighbour that has one, in rising z, y, x.
+  template <class F>
+  void for_neighbours(const Voxel& v, const F& f) const {
+    const std::int64_t middle = place(v);
+    for (std::int64_t dz = -1; dz <= 1; ++dz) {
+      for (std::int64_t dy = -1; dy <= 1; ++dy) {
+        const std::int32_t* row = tree_.data() + middle + (dz * extent_[1] + dy) * extent_[0];
+        for (std::int64_t dx = -1; dx <= 1; ++dx) {
+          if (row[dx] != 0) f(row[dx]);
+        }
+      }
+    }
+  }
+
+ private:
+  std::int64_t place(const Voxel& v) const {
+    return ((v.z - first_[2]) * extent_[1] + (v.y - first_[1])) * extent_[0] + (v.x - first_[0]);
+  }
+  std::array<std::int32_t, 3> first_{INT32_MAX, INT32_MAX, INT32_MAX};
+  std::array<std::int64_t, 3> extent_{};
+  std::vector<std::int32_t> tree_;
+};
+
 class Component {
  public:
-  Component(const VoxelIndex& index, const std::vector<float>& values, double seed_threshold,
+  Component(const std::vector<Voxel>& voxels, const VoxelIndex& index, double seed_threshold,
             std::vector<std::int32_t>& tree_of, std::vector<std::uint8_t>& is_label)
-      : index_(index),
-        values_(values),
+      : dense_(voxels),
+        index_(index),
         seed_(static_cast<float>(seed_threshold)),
         tree_of_(tree_of),
         is_label_(is_label) {}
 
   // tree_of receives the component's own tree numbers (from 1); afterwards root() tells the final tree.
   void grow(std::vector<Voxel>& voxels) {
-    std::sort(voxels.begin(), voxels.end(), [&](const Voxel& a, const Voxel& b) {
-      const float va = values_[static_cast<std::size_t>(a.index)],
-                  vb = values_[static_cast<std::size_t>(b.index)];
-      return va != vb ? va > vb : a.index < b.index;
+    std::sort(voxels.begin(), voxels.end(), [](const Voxel& a, const Voxel& b) {
+      return a.value != b.value ? a.value > b.value : a.index < b.index;
     });
     for (const Voxel& voxel : voxels) add(voxel);
   }
@@ -74,7 +124,7 @@ class Component {
   static float half_of(const Tree& tree) { return 0.5f * std::min(tree.peak, 1.0f); }
 
   void add(const Voxel& voxel) {
-    const float value = values_[static_cast<std::size_t>(voxel.index)];
+    const float value = voxel.value;
     neighbours_.clear();
     collect_neighbours(voxel);
     std::int32_t growing = 0, finished = 0;
@@ -105,6 +155,7 @@ class Component {
     }
     if (tree == 0) tree = finished;
     tree_of_[static_cast<std::size_t>(voxel.index)] = tree;
+    if (dense_.in_use()) dense_.set(voxel, tree);
     is_label_[static_cast<std::size_t>(voxel.index)] = growing != 0;
   }
 
@@ -114,7 +165,14 @@ class Component {
     return a;
   }
 
+  void note_neighbour(std::int32_t tree) {
+    const std::int32_t top = root(tree);
+    if (std::find(neighbours_.begin(), neighbours_.end(), top) == neighbours_.end())
+      neighbours_.push_back(top);
+  }
+
   void collect_neighbours(const Voxel& v) {
+    if (dense_.in_use()) return dense_.for_neighbours(v, [&](std::int32_t tree) { note_neighbour(tree); });
     const auto& size = index_.mask.size();
     for (std::int32_t dz = -1; dz <= 1; ++dz) {
       for (std::int32_t dy = -1; dy <= 1; ++dy) {
@@ -128,18 +186,15 @@ class Component {
           for (std::int32_t x = std::max(run->begin, v.x - 1); x <= std::min(run->end - 1, v.x + 1); ++x) {
             const std::int32_t tree =
                 tree_of_[static_cast<std::size_t>(index_.first_voxel[r] + x - run->begin)];
-            if (tree == 0) continue;
-            const std::int32_t top = root(tree);
-            if (std::find(neighbours_.begin(), neighbours_.end(), top) == neighbours_.end())
-              neighbours_.push_back(top);
+            if (tree != 0) note_neighbour(tree);
           }
         }
       }
     }
   }
 
+  DenseTrees dense_;
   const VoxelIndex& index_;
-  const std::vector<float>& values_;
   float seed_;
   std::vector<std::int32_t>& tree_of_;
   std::vector<std::uint8_t>& is_label_;
@@ -194,10 +249,12 @@ GrownPores grow_pores(const PoreCandidates& candidates, const RunControl& contro
     for (std::size_t i = runs_of[c]; i < runs_of[c + 1]; ++i) {
       const PlacedRun& p = placed[i];
       const Run& run = mask.runs()[p.run];
-      for (std::int32_t x = run.begin; x < run.end; ++x)
-        list.push_back({x, p.y, p.z, index.first_voxel[p.run] + x - run.begin});
+      for (std::int32_t x = run.begin; x < run.end; ++x) {
+        const std::int64_t at = index.first_voxel[p.run] + x - run.begin;
+        list.push_back({x, p.y, p.z, candidates.values[static_cast<std::size_t>(at)], at});
+      }
     }
-    Component component(index, candidates.values, candidates.seed_threshold, tree_of, is_label);
+    Component component(list, index, candidates.seed_threshold, tree_of, is_label);
     component.grow(list);
     auto& peaks = tree_peaks[c];
     peaks.assign(component.trees().size(), 0);

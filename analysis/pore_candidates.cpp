@@ -1,6 +1,7 @@
 #include "analysis/pore_candidates.h"
 
 #include <tbb/enumerable_thread_specific.h>
+#include <tbb/parallel_for.h>
 
 #include <algorithm>
 #include <cmath>
@@ -122,8 +123,22 @@ void join_layer(const BlockGrid& grid, std::int64_t layer, const std::vector<Blo
   }
 }
 
-// Median and lower 16 % point of the smoothed deficit in sound material: pores only raise it, so that the
-// lower side is the noise's.
+// Every second voxel along each axis.
+void sample_block(const DeficitBlock& block, const VoxelBox& box, std::vector<float>& samples) {
+  const VoxelBox& padded = block.box;
+  for (std::int64_t z = box.begin[2]; z < box.end[2]; z += 2) {
+    for (std::int64_t y = box.begin[1]; y < box.end[1]; y += 2) {
+      for (std::int64_t x = box.begin[0]; x < box.end[0]; x += 2) {
+        const auto at = static_cast<std::size_t>(
+            ((z - padded.begin[2]) * padded.extent(1) + (y - padded.begin[1])) * padded.extent(0) + x -
+            padded.begin[0]);
+        if (block.usable[at] != 0) samples.push_back(block.deficit[at]);
+      }
+    }
+  }
+}
+
+// Standard deviation of the smoothed deficit in sound material, from its lower side: pores only raise it.
 double measure_noise(const VolumeSource& source, const GreyDeficit& deficit, const Kernels& kernels, int sign,
                      const RunControl& control) {
   const BlockGrid grid(source.geometry().size);
@@ -131,12 +146,15 @@ double measure_noise(const VolumeSource& source, const GreyDeficit& deficit, con
   const std::int64_t stride = std::max<std::int64_t>(1, blocks / noise_blocks);
   const auto halo = deficit.reach() + reach_of(kernels)[2];
   std::vector<float> samples;
-  DeficitBlock block;
+  std::vector<std::vector<float>> of_block(static_cast<std::size_t>((blocks + stride - 1) / stride));
+  tbb::enumerable_thread_specific<DeficitBlock> working;
   for (const bool only_deep : {true, false}) {
-    SlabReader reader(source);
-    for (std::int64_t i = stride / 2; i < blocks; i += stride) {
-      control.throw_if_cancelled();
+    tbb::parallel_for(std::size_t{0}, of_block.size(), [&](std::size_t n) {
+      of_block[n].clear();
+      const std::int64_t i = stride / 2 + static_cast<std::int64_t>(n) * stride;
+      if (i >= blocks || control.cancelled()) return;
       const VoxelBox box = grid.box(i / grid.per_layer(), i % grid.per_layer());
+      SlabReader reader(source);
       GreyPlanes planes;
       planes.z_begin = std::max<std::int64_t>(0, box.begin[2] - halo);
       planes.z_end = std::min(grid.size[2], box.end[2] + halo);
@@ -144,22 +162,14 @@ double measure_noise(const VolumeSource& source, const GreyDeficit& deficit, con
         planes.voxels = reinterpret_cast<const std::byte*>(
             reader.planes<std::remove_pointer_t<decltype(type)>>(planes.z_begin, planes.z_end));
       });
-      if (!smoothed_deficit(deficit, box, planes, kernels, sign, block) || (only_deep && !block.deep))
-        continue;
-      const VoxelBox& padded = block.box;
-      for (std::int64_t z = box.begin[2]; z < box.end[2]; z += 2) {
-        for (std::int64_t y = box.begin[1]; y < box.end[1]; y += 2) {
-          for (std::int64_t x = box.begin[0]; x < box.end[0]; x += 2) {
-            const auto at = static_cast<std::size_t>(
-                ((z - padded.begin[2]) * padded.extent(1) + (y - padded.begin[1])) * padded.extent(0) + x -
-                padded.begin[0]);
-            if (block.usable[at] != 0) samples.push_back(block.deficit[at]);
-          }
-        }
-      }
-    }
+      DeficitBlock& block = working.local();
+      if (!smoothed_deficit(deficit, box, planes, kernels, sign, block) || (only_deep && !block.deep)) return;
+      sample_block(block, box, of_block[n]);
+    });
+    control.throw_if_cancelled();
+    samples.clear();
+    for (const auto& some : of_block) samples.insert(samples.end(), some.begin(), some.end());
     if (samples.size() > 20000) break;
-    if (only_deep) samples.clear();
   }
   if (samples.size() < 100) return 0;
   const auto at = [&](double share) {

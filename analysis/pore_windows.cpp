@@ -80,6 +80,29 @@ struct Working {
   std::vector<std::int32_t> slots;  // labels met
 };
 
+// Which of the four rows around a run's row hold all of it under the same label: what lies on that side is
+// nearer to them.
+struct Covered {
+  bool before_y = false, behind_y = false, before_z = false, behind_z = false;
+  bool hides(const RowOffset& o) const {
+    return (o.dy < 0 && before_y) || (o.dy > 0 && behind_y) || (o.dz < 0 && before_z) ||
+           (o.dz > 0 && behind_z);
+  }
+};
+
+bool holds(const RunLabels& labels, const LabelRun& run, std::int64_t y, std::int64_t z) {
+  if (y < 0 || z < 0 || y >= labels.size()[1] || z >= labels.size()[2]) return false;
+  const auto row = labels.row(y, z);
+  const auto at = std::upper_bound(row.begin(), row.end(), run.begin,
+                                   [](std::int32_t x, const LabelRun& r) { return x < r.end; });
+  return at != row.end() && at->label == run.label && at->begin <= run.begin && at->end >= run.end;
+}
+
+Covered covered_of(const RunLabels& labels, const LabelRun& run, std::int64_t y, std::int64_t z) {
+  return {holds(labels, run, y - 1, z), holds(labels, run, y + 1, z), holds(labels, run, y, z - 1),
+          holds(labels, run, y, z + 1)};
+}
+
 void lower(Working& w, std::int64_t at, std::int32_t square, std::int32_t label) {
   auto& s = w.square[static_cast<std::size_t>(at)];
   auto& n = w.nearest[static_cast<std::size_t>(at)];
@@ -106,7 +129,9 @@ bool stamp_labels(const RunLabels& labels, const VoxelBox& box, const Stamp& sta
           w.nearest.assign(static_cast<std::size_t>(box.voxels()), 0);
           any = true;
         }
+        const Covered covered = covered_of(labels, run, y, z);
         for (const RowOffset& offset : stamp.rows) {
+          if (covered.hides(offset)) continue;
           const std::int64_t ty = y + offset.dy, tz = z + offset.dz;
           if (ty < box.begin[1] || tz < box.begin[2] || ty >= box.end[1] || tz >= box.end[2]) continue;
           const std::int64_t row = ((tz - box.begin[2]) * ny + (ty - box.begin[1])) * nx - box.begin[0];
