@@ -16,6 +16,8 @@ namespace {
 constexpr double band_widths = 3.5;
 // Nearer to the face than this coverage (1.9 edge widths) a dent of the face and a pore cannot be told apart.
 constexpr float least_coverage = 0.97f;
+// From this coverage on (3.3 edge widths) the face leaves no trace worth the name.
+constexpr float clear_coverage = 0.9995f;
 
 // Beyond this reach a kernel's taps are taken in a loop of its own length.
 constexpr std::int64_t most_fixed_taps = 6;
@@ -101,8 +103,10 @@ std::int64_t next_marked(const std::uint8_t* flags, std::int64_t from, std::int6
 HALFMARK_FOR_WIDE_REGISTERS
 void mark_usable(std::uint8_t* usable, const float* coverage, const float* grey, float least, float threshold,
                  std::int64_t begin, std::int64_t end) {
-  for (std::int64_t x = begin; x < end; ++x)
-    usable[x] = static_cast<std::uint8_t>((coverage[x] >= least) | (grey[x] < threshold));
+  for (std::int64_t x = begin; x < end; ++x) {
+    usable[x] = static_cast<std::uint8_t>(((coverage[x] >= least) | (grey[x] < threshold) ? 1 : 0) +
+                                          (coverage[x] >= clear_coverage ? 1 : 0));
+  }
 }
 
 // Deficits against the grey value that a partly covered voxel should have; 0 where the voxel is not usable.
@@ -336,7 +340,7 @@ void GreyDeficit::fill_typed(const GreyPlanes& planes, DeficitBlock& block) cons
       for (std::int64_t x = x1 - box.begin[0]; x < nx; ++x) out[x] = static_cast<float>(row[x1 - 1]);
       if (block.deep) {
         deficits_of(out, level.data(), air, nx);
-        std::fill(usable, usable + nx, std::uint8_t{1});
+        std::fill(usable, usable + nx, clear_of_face);
         continue;
       }
       const float* p =

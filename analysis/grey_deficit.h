@@ -31,12 +31,15 @@ struct VoxelBox {
   }
 };
 
+// DeficitBlock::usable of a voxel so deep below the face that nothing of the face is left in its deficit.
+constexpr std::uint8_t clear_of_face = 2;
+
 struct DeficitBlock {
   VoxelBox box;                // may reach beyond the volume, whose last voxels continue there
   std::vector<float> deficit;  // x fastest
-  std::vector<std::uint8_t>
-      usable;        // 1: inside the part, and far enough below its face or darker than ISO-50
-  bool deep = true;  // every voxel inside and below the band
+  // 1: inside the part, and far enough below its face or darker than ISO-50; 2: clear of the face.
+  std::vector<std::uint8_t> usable;
+  bool deep = true;                   // every voxel inside and below the band
   std::vector<float> coverage, line;  // working memory
   std::vector<std::uint8_t> flags;
 };
@@ -72,6 +75,12 @@ class GreyDeficit {
   std::array<std::vector<float>, 3> kernel_;  // half kernels of the scan's blur
   double edge_width_ = 1;                     // Gaussian width of an edge, voxels
 };
+
+// A deficit times PoreField::unit as an integer.
+inline std::int32_t fraction_of(float scaled) {
+  const float v = scaled < -32000.0f ? -32000.0f : scaled > 32000.0f ? 32000.0f : scaled;
+  return static_cast<std::int32_t>(v + (v < 0 ? -0.5f : 0.5f));
+}
 
 // Smooths a block in place by symmetric half kernels along x, y, z; the outer kernel reach of the block is
 // not valid afterwards. Elementwise: the same bits on every machine.

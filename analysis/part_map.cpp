@@ -119,12 +119,6 @@ std::vector<std::uint8_t> labels_beside(const RunLabels& labels, std::int32_t co
   return marked;
 }
 
-RunMask empty_mask(const std::array<std::int64_t, 3>& size) {
-  RunMask out(size);
-  for (std::int64_t r = 0; r < size[1] * size[2]; ++r) out.end_row();
-  return out;
-}
-
 // The row of the field of view that stands for row (y, z): itself, or the nearest one in its plane that is
 // not empty.
 std::int64_t nearest_field_row(const FieldOfView& field, std::int64_t y, std::int64_t z) {
@@ -287,7 +281,7 @@ PartMap find_part(const VolumeSource& source, const FieldOfView& field, const Gr
     }
   } else {
     part.inside = field.rows;
-    part.open_air = empty_mask(geometry.size);
+    part.open_air = empty_rows<RunMask>(geometry.size);
   }
   control.step("part", 1);
   return part;

@@ -45,8 +45,9 @@ std::array<std::int64_t, 3> reach_of(const Kernels& kernels) {
 
 // The smoothed deficit (times sign) of the box within block.deficit; false where there is no part.
 bool smoothed_deficit(const GreyDeficit& deficit, const VoxelBox& box, const GreyPlanes& planes,
-                      const Kernels& kernels, int sign, DeficitBlock& block) {
+                      const Kernels& kernels, int sign, DeficitBlock& block, DeficitCells* cells) {
   if (!deficit.fill(box.grown(reach_of(kernels)), planes, block)) return false;
+  if (cells != nullptr) cells->add(block, box);
   if (sign < 0) {
     for (float& d : block.deficit) d = -d;
   }
@@ -163,7 +164,9 @@ double measure_noise(const VolumeSource& source, const GreyDeficit& deficit, con
             reader.planes<std::remove_pointer_t<decltype(type)>>(planes.z_begin, planes.z_end));
       });
       DeficitBlock& block = working.local();
-      if (!smoothed_deficit(deficit, box, planes, kernels, sign, block) || (only_deep && !block.deep)) return;
+      if (!smoothed_deficit(deficit, box, planes, kernels, sign, block, nullptr) ||
+          (only_deep && !block.deep))
+        return;
       sample_block(block, box, of_block[n]);
     });
     control.throw_if_cancelled();
@@ -209,6 +212,7 @@ PoreCandidates find_candidates(const VolumeSource& source, const GreyDeficit& de
 
   const BlockGrid grid(geometry.size);
   out.mask = RunMask(geometry.size);
+  if (sign > 0) out.cells = DeficitCells(geometry.size);
   std::vector<BlockRows> layer_blocks(static_cast<std::size_t>(grid.per_layer()));
   tbb::enumerable_thread_specific<DeficitBlock> blocks;
   for_blocks(
@@ -217,7 +221,7 @@ PoreCandidates find_candidates(const VolumeSource& source, const GreyDeficit& de
         BlockRows& rows = layer_blocks[static_cast<std::size_t>(b)];
         DeficitBlock& block = blocks.local();
         rows = {};
-        if (smoothed_deficit(deficit, box, planes, kernels, sign, block))
+        if (smoothed_deficit(deficit, box, planes, kernels, sign, block, sign > 0 ? &out.cells : nullptr))
           collect(block, box, static_cast<float>(out.low_threshold), rows);
       },
       [&](std::int64_t layer) {

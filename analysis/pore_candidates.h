@@ -3,6 +3,7 @@
 
 #include <vector>
 
+#include "analysis/deficit_cells.h"
 #include "analysis/grey_deficit.h"
 #include "io/run_control.h"
 
@@ -17,6 +18,7 @@ struct PoreCandidates {
   double kernel_voxel = 0;    // Gaussian width of the smoothing, voxels
   RunMask mask;               // the candidates
   std::vector<float> values;  // their smoothed deficit, in the order of the mask's voxels
+  DeficitCells cells;         // of every voxel clear of the face; only for pores
 };
 
 // sign: +1 for pores, -1 for inclusions (the deficit's negative).

@@ -6,6 +6,7 @@
 #include <numeric>
 #include <span>
 
+#include "analysis/diffuse_porosity.h"
 #include "analysis/field_border.h"
 #include "analysis/grey_deficit.h"
 #include "analysis/mask_morphology.h"
@@ -39,13 +40,23 @@ double edge_width(const GreyLevels& levels) {
   return std::sqrt(levels.blur_voxel * levels.blur_voxel + 1.0 / 12);
 }
 
+enum class Search { dark, bright, diffuse };
+constexpr std::int32_t searches = 3;
+
 struct Found {
+  Search search = Search::dark;
   PoreCandidates candidates;
   RunLabels labels;  // grown pores of enough voxels, renumbered
   std::int32_t count = 0;
   std::vector<float> peak;  // index: label
   PoreWindows windows;
+  std::vector<std::array<std::int32_t, 3>> unlisted;  // voxels of pores of fewer than min_voxels
 };
+
+// Until the final numbers are given a pore's id tells search and label.
+std::int32_t interim_id(Search search, std::int32_t label) {
+  return searches * label + static_cast<std::int32_t>(search);
+}
 
 // Labels as runs, without pores of fewer than min_voxels.
 void labels_from(const GrownPores& grown, std::int64_t min_voxels, Found& found) {
@@ -67,6 +78,8 @@ void labels_from(const GrownPores& grown, std::int64_t min_voxels, Found& found)
         LabelRun open{0, 0, 0};
         for (std::int32_t x = run.begin; x < run.end; ++x, ++at) {
           const std::int32_t label = number[static_cast<std::size_t>(grown.label[at])];
+          if (label == 0 && grown.label[at] != 0)
+            found.unlisted.push_back({x, static_cast<std::int32_t>(y), static_cast<std::int32_t>(z)});
           if (label != open.label) {
             if (open.label != 0) found.labels.add_run(open);
             open = {x, x, label};
@@ -103,6 +116,7 @@ RunMask mask_of(const RunLabels& labels) {
 Found find_signed(const VolumeSource& source, const GreyDeficit& deficit, const GreyLevels& levels,
                   const PoreSpec& options, int sign, const RunControl& control) {
   Found found;
+  found.search = sign > 0 ? Search::dark : Search::bright;
   found.candidates = find_candidates(source, deficit, levels, sign, control);
   labels_from(grow_pores(found.candidates, control), options.min_voxels, found);
   control.step("pores", 0.6);
@@ -113,6 +127,37 @@ Found find_signed(const VolumeSource& source, const GreyDeficit& deficit, const 
   const WindowSizes sizes{window_widths * width, ring_voxels};
   found.windows = sum_windows(source, deficit, found.labels, found.count, core, sizes, sign, control);
   found.candidates.values.clear();
+  return found;
+}
+
+// Regions of lowered grey as if they were pores; marks what they swallow of the pores themselves.
+Found find_diffuse(const VolumeSource& source, const GreyDeficit& deficit, const GreyLevels& levels,
+                   const MaterialLevel& level, Found& dark, std::vector<std::uint8_t>& swallowed,
+                   const RunControl& control) {
+  Found found;
+  found.search = Search::diffuse;
+  found.candidates.white_ratio = dark.candidates.white_ratio;
+  DiffuseRegions regions = find_diffuse_regions(dark.candidates.cells, dark.windows, dark.unlisted,
+                                                level.standard_uncertainty / levels.contrast(), control);
+  swallowed = std::move(regions.swallowed);
+  found.labels = empty_rows<RunLabels>(source.geometry().size);
+  found.windows.windows = found.labels;
+  found.peak = std::move(regions.peak);
+  found.count = regions.count;
+  if (found.count == 0) return found;
+  // What a region swallows may become its own; other windows stay the pores'.
+  RunLabels taken(source.geometry().size);
+  for (std::int64_t z = 0; z < taken.size()[2]; ++z) {
+    for (std::int64_t y = 0; y < taken.size()[1]; ++y) {
+      for (const LabelRun& run : dark.windows.windows.row(y, z)) {
+        if (swallowed[static_cast<std::size_t>(run.label)] == 0) taken.add_run(run);
+      }
+      taken.end_row();
+    }
+  }
+  found.windows =
+      sum_regions(source, deficit, dark.candidates.cells, regions.region, found.count, taken, control);
+  found.labels = found.windows.windows;
   return found;
 }
 
@@ -222,35 +267,43 @@ Pore pore_from(const PoreSums& s, const VolumeOfPore& volume, double share, cons
   return pore;
 }
 
-// Adds the pores of one sign to the result; returns for each label its place in `out.pores` (-1: none).
-void add_pores(const Found& found, int sign, const GreyLevels& levels, const MaterialLevel& level,
-               const PartMap& part, const FieldOfView& field, const VolumeGeometry& geometry, double share,
-               std::vector<Pore>& out) {
+PoreKind kind_of(Search search, bool in_between, const Pore& pore) {
+  if (search == Search::bright) return PoreKind::inclusion;
+  if (search == Search::diffuse) return PoreKind::diffuse;
+  return in_between          ? PoreKind::in_between
+         : pore.cut_by_field ? PoreKind::cut_by_field
+         : pore.open         ? PoreKind::open
+                             : PoreKind::closed;
+}
+
+// Adds the pores of one search to the result, with their interim ids.
+void add_pores(const Found& found, const std::vector<std::uint8_t>& swallowed, const GreyLevels& levels,
+               const MaterialLevel& level, const PartMap& part, const FieldOfView& field,
+               const VolumeGeometry& geometry, double share, std::vector<Pore>& out) {
   const Touches touches = touches_of(found.labels, found.count, part, field);
   for (std::int32_t l = 1; l <= found.count; ++l) {
     const auto i = static_cast<std::size_t>(l);
+    if (i < swallowed.size() && swallowed[i] != 0) continue;
     const PoreSums& s = found.windows.sums[i];
     const double plateau =
         s.core_voxels >= least_core_voxels
             ? static_cast<double>(s.core) / PoreField::unit / static_cast<double>(s.core_voxels)
             : 0;
-    const bool in_between = sign > 0 && plateau > in_between_low && plateau < in_between_high;
+    const bool in_between =
+        found.search == Search::dark && plateau > in_between_low && plateau < in_between_high;
     // Inclusions and trapped powder are sized by half of their own plateau or peak: the sum relative to it.
     double full = share;
     if (in_between) full = plateau;
-    if (sign < 0) full = plateau > 0 ? plateau : std::max<double>(static_cast<double>(found.peak[i]), 0.05);
+    if (found.search == Search::bright)
+      full = plateau > 0 ? plateau : std::max<double>(static_cast<double>(found.peak[i]), 0.05);
     Pore pore = pore_from(s, volume_of(s, levels, level, found.candidates.white_ratio), full, geometry);
-    pore.id = sign * l;
+    pore.id = interim_id(found.search, l);
     pore.contrast = static_cast<double>(found.peak[i]);
-    pore.open = sign > 0 && touches.open[i] != 0;
+    pore.open = found.search == Search::dark && touches.open[i] != 0;
     pore.cut_by_field = touches.border[i] != 0;
     pore.min_index = touches.min[i];
     pore.max_index = touches.max[i];
-    pore.kind = sign < 0            ? PoreKind::inclusion
-                : in_between        ? PoreKind::in_between
-                : pore.cut_by_field ? PoreKind::cut_by_field
-                : pore.open         ? PoreKind::open
-                                    : PoreKind::closed;
+    pore.kind = kind_of(found.search, in_between, pore);
     if (pore.volume_mm3.value > 0) out.push_back(pore);
   }
 }
@@ -298,19 +351,18 @@ void add_renumbered(std::span<const LabelRun> row, const std::vector<std::int32_
   }
 }
 
-std::vector<std::int32_t> new_numbers(const std::vector<Pore>& pores, std::int32_t count, int sign) {
-  std::vector<std::int32_t> number(static_cast<std::size_t>(count) + 1, 0);
+std::vector<std::int32_t> new_numbers(const std::vector<Pore>& pores, const Found& found) {
+  std::vector<std::int32_t> number(static_cast<std::size_t>(found.count) + 1, 0);
   for (std::size_t i = 0; i < pores.size(); ++i) {
-    if (sign * pores[i].id > 0)
-      number[static_cast<std::size_t>(sign * pores[i].id)] = static_cast<std::int32_t>(i) + 1;
+    if (pores[i].id % searches == static_cast<std::int32_t>(found.search))
+      number[static_cast<std::size_t>(pores[i].id / searches)] = static_cast<std::int32_t>(i) + 1;
   }
   return number;
 }
 
-// Joins the windows and labels of both signs under the final numbers. Where a pore's and an inclusion's
+// Joins the windows and labels of all searches under the final numbers. Where a pore's and an inclusion's
 // window overlap the pore keeps the voxel.
-PoreField join_fields(const std::vector<const Found*>& found,
-                      const std::vector<std::vector<std::int32_t>>& numbers,
+PoreField join_fields(const std::vector<Found>& found, const std::vector<std::vector<std::int32_t>>& numbers,
                       const std::vector<std::vector<double>>& corrections, double share,
                       const std::array<std::int64_t, 3>& size) {
   PoreField out;
@@ -322,7 +374,7 @@ PoreField join_fields(const std::vector<const Found*>& found,
       std::vector<LabelRun> runs;
       std::vector<std::vector<std::int16_t>> values;
       for (std::size_t f = 0; f < found.size(); ++f) {
-        add_renumbered(found[f]->windows.windows.row(y, z), numbers[f], &found[f]->windows.fraction,
+        add_renumbered(found[f].windows.windows.row(y, z), numbers[f], &found[f].windows.fraction,
                        &corrections[f], at[f], 1 / share, runs, &values);
       }
       std::vector<std::size_t> order(runs.size());
@@ -340,7 +392,7 @@ PoreField join_fields(const std::vector<const Found*>& found,
       out.windows.end_row();
       runs.clear();
       for (std::size_t f = 0; f < found.size(); ++f)
-        add_renumbered(found[f]->labels.row(y, z), numbers[f], nullptr, nullptr, unused[f], 1, runs, nullptr);
+        add_renumbered(found[f].labels.row(y, z), numbers[f], nullptr, nullptr, unused[f], 1, runs, nullptr);
       std::stable_sort(runs.begin(), runs.end(),
                        [](const LabelRun& a, const LabelRun& b) { return a.begin < b.begin; });
       for (const LabelRun& run : runs) out.labels.add_run(run);
@@ -366,26 +418,29 @@ SegmentedPores segment_pores(const VolumeSource& source, const FieldOfView& fiel
   control.step("pores", 0);
   const VolumeGeometry& geometry = source.geometry();
   const GreyDeficit deficit(source, field, levels, part, level);
-  const Found dark = find_signed(source, deficit, levels, options, 1, control);
-  Found bright;
-  if (options.inclusions) bright = find_signed(source, deficit, levels, options, -1, control);
+  std::vector<Found> found;
+  found.push_back(find_signed(source, deficit, levels, options, 1, control));
+  std::vector<std::uint8_t> swallowed;
+  found.push_back(find_diffuse(source, deficit, levels, level, found[0], swallowed, control));
+  if (options.inclusions) found.push_back(find_signed(source, deficit, levels, options, -1, control));
 
   SegmentedPores out;
+  const Found& dark = found[0];
   const double share = void_share(dark.windows.sums);
   out.void_grey = levels.material - share * levels.contrast();
   out.smoothed_noise = dark.candidates.smoothed_noise;
   out.seed_threshold = dark.candidates.seed_threshold;
   out.kernel_voxel = dark.candidates.kernel_voxel;
-  add_pores(dark, 1, levels, level, part, field, geometry, share, out.pores);
-  if (options.inclusions) add_pores(bright, -1, levels, level, part, field, geometry, share, out.pores);
+  for (const Found& f : found) {
+    add_pores(f, f.search == Search::dark ? swallowed : std::vector<std::uint8_t>{}, levels, level, part,
+              field, geometry, share, out.pores);
+  }
   sort_pores(out.pores);
-  std::vector<const Found*> found{&dark};
-  std::vector<std::vector<std::int32_t>> numbers{new_numbers(out.pores, dark.count, 1)};
-  std::vector<std::vector<double>> corrections{corrections_of(dark, levels, level)};
-  if (options.inclusions) {
-    found.push_back(&bright);
-    numbers.push_back(new_numbers(out.pores, bright.count, -1));
-    corrections.push_back(corrections_of(bright, levels, level));
+  std::vector<std::vector<std::int32_t>> numbers;
+  std::vector<std::vector<double>> corrections;
+  for (const Found& f : found) {
+    numbers.push_back(new_numbers(out.pores, f));
+    corrections.push_back(corrections_of(f, levels, level));
   }
   out.field = join_fields(found, numbers, corrections, share, geometry.size);
   for (std::size_t i = 0; i < out.pores.size(); ++i) out.pores[i].id = static_cast<std::int32_t>(i) + 1;

@@ -70,6 +70,7 @@ struct BlockResult {
   std::vector<std::uint32_t> row_runs;
   std::vector<LabelRun> runs;
   std::vector<std::int16_t> fraction;
+  std::vector<std::uint8_t> clear;
   std::vector<std::pair<std::int32_t, PoreSums>> sums;  // by rising label
 };
 
@@ -153,13 +154,12 @@ bool stamp_labels(const RunLabels& labels, const VoxelBox& box, const Stamp& sta
 }
 
 std::int16_t to_fraction(float deficit) {
-  return static_cast<std::int16_t>(
-      std::lround(std::clamp(deficit * static_cast<float>(PoreField::unit), -32000.0f, 32000.0f)));
+  return static_cast<std::int16_t>(fraction_of(deficit * static_cast<float>(PoreField::unit)));
 }
 
 template <class T>
 void sum_block(const GreyPlanes& planes, const std::array<std::int64_t, 3>& size, const RunMask& core,
-               const VoxelBox& box, const Stamp& stamp, int sign, const std::vector<std::int32_t>& slot_of,
+               const VoxelBox& box, std::int32_t window, int sign, const std::vector<std::int32_t>& slot_of,
                Working& w, BlockResult& out) {
   const T* greys = reinterpret_cast<const T*>(planes.voxels);
   const std::int64_t nx = box.extent(0), ny = box.extent(1);
@@ -174,7 +174,7 @@ void sum_block(const GreyPlanes& planes, const std::array<std::int64_t, 3>& size
         if (label == 0 || w.block.usable[at] == 0) continue;
         PoreSums& sums = w.sums[static_cast<std::size_t>(slot_of[static_cast<std::size_t>(label)])];
         const std::int16_t fraction = to_fraction(sign > 0 ? w.block.deficit[at] : -w.block.deficit[at]);
-        if (w.square[at] > stamp.window) {
+        if (w.square[at] > window) {
           ++sums.ring_voxels;
           sums.ring += fraction;
           continue;
@@ -188,6 +188,7 @@ void sum_block(const GreyPlanes& planes, const std::array<std::int64_t, 3>& size
           out.runs.push_back({x32, x32 + 1, label});
         }
         out.fraction.push_back(fraction);
+        out.clear.push_back(w.block.usable[at] >= clear_of_face);
         if (w.square[at] != 0) continue;
         ++sums.label_voxels;
         sums.label += fraction;
@@ -231,6 +232,8 @@ void join_layer(const BlockGrid& grid, std::int64_t layer, const std::vector<Blo
           const auto length = static_cast<std::ptrdiff_t>(run.end - run.begin);
           const auto from = block.fraction.begin() + static_cast<std::ptrdiff_t>(next_value[b]);
           out.fraction.insert(out.fraction.end(), from, from + length);
+          const auto clear = block.clear.begin() + static_cast<std::ptrdiff_t>(next_value[b]);
+          out.clear.insert(out.clear.end(), clear, clear + length);
           next_value[b] += static_cast<std::size_t>(length);
           if (open.end == run.begin && open.label == run.label) {
             open.end = run.end;
@@ -249,13 +252,13 @@ void join_layer(const BlockGrid& grid, std::int64_t layer, const std::vector<Blo
   }
 }
 
-}  // namespace
-
-PoreWindows sum_windows(const VolumeSource& source, const GreyDeficit& deficit, const RunLabels& labels,
-                        std::int32_t count, const RunMask& core, const WindowSizes& sizes, int sign,
-                        const RunControl& control) {
+// Sums over blocks: assign(box, working) fills `square` and `nearest` and tells whether any voxel has a
+// label; drop(box, working), after the deficits are there, may take labels off again.
+template <class Assign, class Drop>
+PoreWindows sum_blocks(const VolumeSource& source, const GreyDeficit& deficit, std::int32_t count,
+                       const RunMask& core, std::int32_t window, int sign, const RunControl& control,
+                       const Assign& assign, const Drop& drop) {
   const VolumeGeometry& geometry = source.geometry();
-  const Stamp stamp = stamp_of(geometry, sizes);
   const BlockGrid grid(geometry.size);
   PoreWindows out;
   out.sums.resize(static_cast<std::size_t>(count) + 1);
@@ -270,7 +273,8 @@ PoreWindows sum_windows(const VolumeSource& source, const GreyDeficit& deficit, 
         BlockResult& result = results[static_cast<std::size_t>(b)];
         result = {};
         Working& w = working.local();
-        if (!stamp_labels(labels, box, stamp, w) || !deficit.fill(box, planes, w.block)) return;
+        if (!assign(box, w) || !deficit.fill(box, planes, w.block)) return;
+        drop(box, w);
         std::vector<std::int32_t>& slot_of = slot_tables.local();
         w.slots.clear();
         w.sums.clear();
@@ -281,7 +285,7 @@ PoreWindows sum_windows(const VolumeSource& source, const GreyDeficit& deficit, 
         }
         w.sums.resize(w.slots.size());
         visit_voxel_type(source.voxel_type(), [&](auto* type) {
-          sum_block<std::remove_pointer_t<decltype(type)>>(planes, geometry.size, core, box, stamp, sign,
+          sum_block<std::remove_pointer_t<decltype(type)>>(planes, geometry.size, core, box, window, sign,
                                                            slot_of, w, result);
         });
         for (std::size_t i = 0; i < w.slots.size(); ++i) {
@@ -295,6 +299,68 @@ PoreWindows sum_windows(const VolumeSource& source, const GreyDeficit& deficit, 
                      0.6 + 0.4 * static_cast<double>(layer + 1) / static_cast<double>(grid.count[2]));
       });
   return out;
+}
+
+// Labels of the cells' regions, voxel by voxel. False if the box holds none.
+bool assign_regions(const std::vector<std::int32_t>& region, const DeficitCells& cells, const VoxelBox& box,
+                    Working& w) {
+  bool any = false;
+  const std::int64_t nx = box.extent(0), ny = box.extent(1);
+  for (std::int64_t z = box.begin[2]; z < box.end[2]; ++z) {
+    for (std::int64_t y = box.begin[1]; y < box.end[1]; ++y) {
+      for (std::int64_t x = box.begin[0]; x < box.end[0]; x += DeficitCells::edge) {
+        const std::int32_t label = region[cells.index_of_voxel(x, y, z)];
+        if (label == 0) continue;
+        if (!any) {
+          w.square.assign(static_cast<std::size_t>(box.voxels()), 0);
+          w.nearest.assign(static_cast<std::size_t>(box.voxels()), 0);
+          any = true;
+        }
+        const std::int64_t at = ((z - box.begin[2]) * ny + (y - box.begin[1])) * nx + x - box.begin[0];
+        std::fill_n(w.nearest.begin() + at, std::min(DeficitCells::edge, box.end[0] - x), label);
+      }
+    }
+  }
+  return any;
+}
+
+// Leaves only voxels clear of the face and in no window.
+void drop_taken(const RunLabels& taken, const VoxelBox& box, Working& w) {
+  for (std::size_t i = 0; i < w.nearest.size(); ++i) {
+    if (w.block.usable[i] < clear_of_face) w.nearest[i] = 0;
+  }
+  const std::int64_t nx = box.extent(0), ny = box.extent(1);
+  for (std::int64_t z = box.begin[2]; z < box.end[2]; ++z) {
+    for (std::int64_t y = box.begin[1]; y < box.end[1]; ++y) {
+      const std::int64_t row = ((z - box.begin[2]) * ny + (y - box.begin[1])) * nx - box.begin[0];
+      for (const LabelRun& run : taken.row(y, z)) {
+        for (std::int64_t x = std::max<std::int64_t>(run.begin, box.begin[0]);
+             x < std::min<std::int64_t>(run.end, box.end[0]); ++x)
+          w.nearest[static_cast<std::size_t>(row + x)] = 0;
+      }
+    }
+  }
+}
+
+}  // namespace
+
+PoreWindows sum_windows(const VolumeSource& source, const GreyDeficit& deficit, const RunLabels& labels,
+                        std::int32_t count, const RunMask& core, const WindowSizes& sizes, int sign,
+                        const RunControl& control) {
+  const Stamp stamp = stamp_of(source.geometry(), sizes);
+  return sum_blocks(
+      source, deficit, count, core, stamp.window, sign, control,
+      [&](const VoxelBox& box, Working& w) { return stamp_labels(labels, box, stamp, w); },
+      [](const VoxelBox&, Working&) {});
+}
+
+PoreWindows sum_regions(const VolumeSource& source, const GreyDeficit& deficit, const DeficitCells& cells,
+                        const std::vector<std::int32_t>& region, std::int32_t count, const RunLabels& taken,
+                        const RunControl& control) {
+  return sum_blocks(
+      source, deficit, count, empty_rows<RunMask>(source.geometry().size), 0, 1, control,
+      [&](const VoxelBox& box, Working& w) { return assign_regions(region, cells, box, w); },
+      [&](const VoxelBox& box, Working& w) { drop_taken(taken, box, w); });
 }
 
 }  // namespace halfmark

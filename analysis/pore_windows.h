@@ -5,6 +5,7 @@
 #include <cstdint>
 #include <vector>
 
+#include "analysis/deficit_cells.h"
 #include "analysis/grey_deficit.h"
 #include "analysis/pores.h"
 #include "io/run_control.h"
@@ -27,7 +28,8 @@ struct PoreSums {
 struct PoreWindows {
   std::vector<PoreSums> sums;  // index: label; [0] unused
   RunLabels windows;
-  std::vector<std::int16_t> fraction;
+  std::vector<std::int16_t> fraction;  // of the windows' voxels, in order
+  std::vector<std::uint8_t> clear;     // 1: clear of the outer face
 };
 
 struct WindowSizes {
@@ -38,6 +40,12 @@ struct WindowSizes {
 // labels: grown pores, numbered 1 ... count. core: voxels deep inside labels. sign as in find_candidates.
 PoreWindows sum_windows(const VolumeSource& source, const GreyDeficit& deficit, const RunLabels& labels,
                         std::int32_t count, const RunMask& core, const WindowSizes& sizes, int sign,
+                        const RunControl& control);
+
+// The same over regions made of whole cells: every voxel of a region that is clear of the face and in no
+// window of `taken` is label, window and nothing else. region[i]: the region of cell i, 0 none.
+PoreWindows sum_regions(const VolumeSource& source, const GreyDeficit& deficit, const DeficitCells& cells,
+                        const std::vector<std::int32_t>& region, std::int32_t count, const RunLabels& taken,
                         const RunControl& control);
 
 }  // namespace halfmark

@@ -66,6 +66,14 @@ class RunRows {
 using RunMask = RunRows<Run>;
 using RunLabels = RunRows<LabelRun>;
 
+// All rows of a volume, none with a run.
+template <class Rows>
+Rows empty_rows(const std::array<std::int64_t, 3>& size) {
+  Rows out(size);
+  for (std::int64_t r = 0; r < size[1] * size[2]; ++r) out.end_row();
+  return out;
+}
+
 // Runs of the voxels of one row whose flag is not zero, appended to `mask` as its next row.
 void add_row_of_flags(RunMask& mask, const std::uint8_t* flags, std::int64_t count);
 
