@@ -13,21 +13,16 @@ namespace {
 
 constexpr std::int64_t cell_voxels = DeficitCells::edge * DeficitCells::edge * DeficitCells::edge;
 
-// Adds a row of voxels to their cells; integers, so that the order does not matter.
+// Adds the fractions of a row's voxels that are clear of the face; integers, so that the order does not
+// matter.
 HALFMARK_FOR_WIDE_REGISTERS
-void add_row(const float* deficit, const std::uint8_t* usable, std::int64_t cells, std::int32_t* sum,
-             std::int32_t* voxels) {
+void add_fractions(const float* deficit, const std::uint8_t* usable, std::int64_t count,
+                   std::int32_t* __restrict sum, std::int32_t* __restrict voxels) {
   constexpr float unit = static_cast<float>(PoreField::unit);
-  for (std::int64_t c = 0; c < cells; ++c) {
-    std::int32_t s = 0, n = 0;
-    for (std::int64_t k = 0; k < DeficitCells::edge; ++k) {
-      const std::int64_t x = DeficitCells::edge * c + k;
-      const std::int32_t counted = usable[x] >= clear_of_face ? 1 : 0;
-      s += fraction_of(deficit[x] * unit) * counted;
-      n += counted;
-    }
-    sum[c] += s;
-    voxels[c] += n;
+  for (std::int64_t x = 0; x < count; ++x) {
+    const std::int32_t counted = usable[x] >= clear_of_face ? 1 : 0;
+    sum[x] += fraction_of(deficit[x] * unit) & -counted;
+    voxels[x] += counted;
   }
 }
 
@@ -72,20 +67,23 @@ DeficitCells::DeficitCells(const std::array<std::int64_t, 3>& volume) {
 
 void DeficitCells::add(const DeficitBlock& block, const VoxelBox& core) {
   const VoxelBox& box = block.box;
-  const std::int64_t whole = core.extent(0) / edge, rest = core.extent(0) % edge;
-  for (std::int64_t z = core.begin[2]; z < core.end[2]; ++z) {
-    for (std::int64_t y = core.begin[1]; y < core.end[1]; ++y) {
-      const std::int64_t at = ((z - box.begin[2]) * box.extent(1) + (y - box.begin[1])) * box.extent(0) +
-                              (core.begin[0] - box.begin[0]);
-      const float* deficit = block.deficit.data() + at;
-      const std::uint8_t* usable = block.usable.data() + at;
-      const std::size_t cell = index_of_voxel(core.begin[0], y, z);
-      add_row(deficit, usable, whole, sum_.data() + cell, voxels_.data() + cell);
-      for (std::int64_t x = whole * edge; x < whole * edge + rest; ++x) {
-        if (usable[x] < clear_of_face) continue;
-        sum_[cell + static_cast<std::size_t>(whole)] +=
-            fraction_of(deficit[x] * static_cast<float>(PoreField::unit));
-        ++voxels_[cell + static_cast<std::size_t>(whole)];
+  const std::int64_t nx = core.extent(0);
+  std::vector<std::int32_t> sum(static_cast<std::size_t>(nx)), voxels(static_cast<std::size_t>(nx));
+  for (std::int64_t z0 = core.begin[2]; z0 < core.end[2]; z0 += edge) {
+    for (std::int64_t y0 = core.begin[1]; y0 < core.end[1]; y0 += edge) {
+      std::fill(sum.begin(), sum.end(), 0);
+      std::fill(voxels.begin(), voxels.end(), 0);
+      for (std::int64_t z = z0; z < std::min(z0 + edge, core.end[2]); ++z) {
+        for (std::int64_t y = y0; y < std::min(y0 + edge, core.end[1]); ++y) {
+          const std::int64_t at = ((z - box.begin[2]) * box.extent(1) + (y - box.begin[1])) * box.extent(0) +
+                                  (core.begin[0] - box.begin[0]);
+          add_fractions(block.deficit.data() + at, block.usable.data() + at, nx, sum.data(), voxels.data());
+        }
+      }
+      const std::size_t first = index_of_voxel(core.begin[0], y0, z0);
+      for (std::int64_t x = 0; x < nx; ++x) {
+        sum_[first + static_cast<std::size_t>(x / edge)] += sum[static_cast<std::size_t>(x)];
+        voxels_[first + static_cast<std::size_t>(x / edge)] += voxels[static_cast<std::size_t>(x)];
       }
     }
   }

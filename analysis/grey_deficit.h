@@ -76,10 +76,11 @@ class GreyDeficit {
   double edge_width_ = 1;                     // Gaussian width of an edge, voxels
 };
 
-// A deficit times PoreField::unit as an integer.
+// A deficit times PoreField::unit as an integer, within +-32000. Written so that compilers find no branch.
 inline std::int32_t fraction_of(float scaled) {
-  const float v = scaled < -32000.0f ? -32000.0f : scaled > 32000.0f ? 32000.0f : scaled;
-  return static_cast<std::int32_t>(v + (v < 0 ? -0.5f : 0.5f));
+  const float above = scaled > -32000.0f ? scaled : -32000.0f;
+  const float within = above < 32000.0f ? above : 32000.0f;
+  return static_cast<std::int32_t>(within + 32768.5f) - 32768;
 }
 
 // Smooths a block in place by symmetric half kernels along x, y, z; the outer kernel reach of the block is

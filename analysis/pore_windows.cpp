@@ -67,6 +67,7 @@ Stamp stamp_of(const VolumeGeometry& geometry, const WindowSizes& sizes) {
 }
 
 struct BlockResult {
+  VoxelBox box;  // of the block: what holds all of its labels
   std::vector<std::uint32_t> row_runs;
   std::vector<LabelRun> runs;
   std::vector<std::int16_t> fraction;
@@ -113,44 +114,61 @@ void lower(Working& w, std::int64_t at, std::int32_t square, std::int32_t label)
   }
 }
 
-// Squared distance to the nearest label voxel and its label, for every voxel of the box within reach. True if
-// any.
-bool stamp_labels(const RunLabels& labels, const VoxelBox& box, const Stamp& stamp, Working& w) {
+// Calls f(run, y, z) for the runs whose stamps reach into the box.
+template <class F>
+void for_runs_near(const RunLabels& labels, const VoxelBox& box, const Stamp& stamp, const F& f) {
   const auto& size = labels.size();
-  bool any = false;
-  const std::int64_t nx = box.extent(0), ny = box.extent(1);
   for (std::int64_t z = std::max<std::int64_t>(0, box.begin[2] - stamp.reach[2]);
        z < std::min(size[2], box.end[2] + stamp.reach[2]); ++z) {
     for (std::int64_t y = std::max<std::int64_t>(0, box.begin[1] - stamp.reach[1]);
          y < std::min(size[1], box.end[1] + stamp.reach[1]); ++y) {
       for (const LabelRun& run : labels.row(y, z)) {
         if (run.end + stamp.reach[0] <= box.begin[0] || run.begin - stamp.reach[0] >= box.end[0]) continue;
-        if (!any) {
-          w.square.assign(static_cast<std::size_t>(box.voxels()), no_distance);
-          w.nearest.assign(static_cast<std::size_t>(box.voxels()), 0);
-          any = true;
-        }
-        const Covered covered = covered_of(labels, run, y, z);
-        for (const RowOffset& offset : stamp.rows) {
-          if (covered.hides(offset)) continue;
-          const std::int64_t ty = y + offset.dy, tz = z + offset.dz;
-          if (ty < box.begin[1] || tz < box.begin[2] || ty >= box.end[1] || tz >= box.end[2]) continue;
-          const std::int64_t row = ((tz - box.begin[2]) * ny + (ty - box.begin[1])) * nx - box.begin[0];
-          const std::int64_t b = std::max<std::int64_t>(run.begin, box.begin[0]),
-                             e = std::min<std::int64_t>(run.end, box.end[0]);
-          for (std::int64_t x = b; x < e; ++x) lower(w, row + x, offset.square, run.label);
-          for (std::int64_t k = 1; k <= stamp.reach[0]; ++k) {
-            const std::int32_t square = offset.square + stamp.x_square[static_cast<std::size_t>(k)];
-            if (square > stamp.ring) break;
-            const std::int64_t left = run.begin - k, right = run.end - 1 + k;
-            if (left >= box.begin[0] && left < box.end[0]) lower(w, row + left, square, run.label);
-            if (right >= box.begin[0] && right < box.end[0]) lower(w, row + right, square, run.label);
-          }
-        }
+        f(run, y, z);
       }
     }
   }
-  return any;
+}
+
+// The part of the box that the stamps of labels can reach; empty (begin = end) where there is none.
+VoxelBox reached_box(const RunLabels& labels, const VoxelBox& box, const Stamp& stamp) {
+  VoxelBox out{box.end, box.begin};
+  bool any = false;
+  for_runs_near(labels, box, stamp, [&](const LabelRun& run, std::int64_t y, std::int64_t z) {
+    any = true;
+    const std::array<std::int64_t, 3> first{run.begin, y, z}, last{run.end - 1, y, z};
+    for (std::size_t a = 0; a < 3; ++a) {
+      out.begin[a] = std::min(out.begin[a], std::max(box.begin[a], first[a] - stamp.reach[a]));
+      out.end[a] = std::max(out.end[a], std::min(box.end[a], last[a] + stamp.reach[a] + 1));
+    }
+  });
+  return any ? out : VoxelBox{box.begin, box.begin};
+}
+
+// Squared distance to the nearest label voxel and its label, for every voxel of the box within reach.
+void stamp_labels(const RunLabels& labels, const VoxelBox& box, const Stamp& stamp, Working& w) {
+  const std::int64_t nx = box.extent(0), ny = box.extent(1);
+  w.square.assign(static_cast<std::size_t>(box.voxels()), no_distance);
+  w.nearest.assign(static_cast<std::size_t>(box.voxels()), 0);
+  for_runs_near(labels, box, stamp, [&](const LabelRun& run, std::int64_t y, std::int64_t z) {
+    const Covered covered = covered_of(labels, run, y, z);
+    for (const RowOffset& offset : stamp.rows) {
+      if (covered.hides(offset)) continue;
+      const std::int64_t ty = y + offset.dy, tz = z + offset.dz;
+      if (ty < box.begin[1] || tz < box.begin[2] || ty >= box.end[1] || tz >= box.end[2]) continue;
+      const std::int64_t row = ((tz - box.begin[2]) * ny + (ty - box.begin[1])) * nx - box.begin[0];
+      const std::int64_t b = std::max<std::int64_t>(run.begin, box.begin[0]),
+                         e = std::min<std::int64_t>(run.end, box.end[0]);
+      for (std::int64_t x = b; x < e; ++x) lower(w, row + x, offset.square, run.label);
+      for (std::int64_t k = 1; k <= stamp.reach[0]; ++k) {
+        const std::int32_t square = offset.square + stamp.x_square[static_cast<std::size_t>(k)];
+        if (square > stamp.ring) break;
+        const std::int64_t left = run.begin - k, right = run.end - 1 + k;
+        if (left >= box.begin[0] && left < box.end[0]) lower(w, row + left, square, run.label);
+        if (right >= box.begin[0] && right < box.end[0]) lower(w, row + right, square, run.label);
+      }
+    }
+  });
 }
 
 std::int16_t to_fraction(float deficit) {
@@ -225,7 +243,8 @@ void join_layer(const BlockGrid& grid, std::int64_t layer, const std::vector<Blo
         const auto b = static_cast<std::size_t>(y / BlockSizes::y * grid.count[0] + bx);
         const BlockResult& block = blocks[b];
         if (block.row_runs.empty()) continue;
-        const VoxelBox box = grid.box(layer, static_cast<std::int64_t>(b));
+        const VoxelBox& box = block.box;
+        if (y < box.begin[1] || z < box.begin[2] || y >= box.end[1] || z >= box.end[2]) continue;
         const auto row = static_cast<std::size_t>((z - box.begin[2]) * box.extent(1) + (y - box.begin[1]));
         for (std::uint32_t i = 0; i < block.row_runs[row]; ++i) {
           const LabelRun run = block.runs[next_run[b]++];
@@ -269,11 +288,13 @@ PoreWindows sum_blocks(const VolumeSource& source, const GreyDeficit& deficit, s
       [&] { return std::vector<std::int32_t>(static_cast<std::size_t>(count) + 1, -1); });
   for_blocks(
       source, deficit.reach(), control,
-      [&](std::int64_t, std::int64_t b, const VoxelBox& box, const GreyPlanes& planes) {
+      [&](std::int64_t, std::int64_t b, const VoxelBox& whole, const GreyPlanes& planes) {
         BlockResult& result = results[static_cast<std::size_t>(b)];
         result = {};
         Working& w = working.local();
+        VoxelBox box = whole;
         if (!assign(box, w) || !deficit.fill(box, planes, w.block)) return;
+        result.box = box;
         drop(box, w);
         std::vector<std::int32_t>& slot_of = slot_tables.local();
         w.slots.clear();
@@ -350,7 +371,12 @@ PoreWindows sum_windows(const VolumeSource& source, const GreyDeficit& deficit, 
   const Stamp stamp = stamp_of(source.geometry(), sizes);
   return sum_blocks(
       source, deficit, count, core, stamp.window, sign, control,
-      [&](const VoxelBox& box, Working& w) { return stamp_labels(labels, box, stamp, w); },
+      [&](VoxelBox& box, Working& w) {
+        box = reached_box(labels, box, stamp);
+        if (box.voxels() == 0) return false;
+        stamp_labels(labels, box, stamp, w);
+        return true;
+      },
       [](const VoxelBox&, Working&) {});
 }
 
