@@ -5,6 +5,7 @@
 //   pore_accuracy              the table
 //   pore_accuracy --further    further phantoms: pairs, faces, discs, clouds, correlated noise, rings ...
 //   pore_accuracy --only BLUR CONTRAST_TO_NOISE CUPPING    one combination
+#include <algorithm>
 #include <cmath>
 #include <cstdio>
 #include <cstdlib>
@@ -128,12 +129,41 @@ void print(const Result& r) {
   std::fflush(stdout);
 }
 
+// One line a combination: what holds from 3 voxels (found) and from 5 voxels (sizes) on, the worst class
+// each.
+void print_summary(const std::vector<Result>& results) {
+  std::printf(
+      "\n| blur | contrast-to-noise | cupping | found, from 3 voxels | false | worst mean volume error, from "
+      "5 | "
+      "worst diameter RMS | worst centre RMS | `iso50`: false | `iso50`: volume error at 6 |\n"
+      "|---|---|---|---|---|---|---|---|---|---|\n");
+  for (const Result& r : results) {
+    int found = 0, total = 0;
+    double volume = 0, diameter = 0, centre = 0;
+    for (const auto& [size, figures] : r.local.classes) {
+      found += size >= 3 ? figures.found : 0;
+      total += size >= 3 ? figures.total : 0;
+      if (size < 5) continue;
+      if (std::abs(figures.volume_error_percent()) > std::abs(volume))
+        volume = figures.volume_error_percent();
+      diameter = std::max(diameter, figures.diameter_rms());
+      centre = std::max(centre, figures.centre_rms());
+    }
+    std::printf("| %.1f | %g | %g %% | %d of %d | %d | %+.1f %% | %.3f | %.3f | %d | %+.1f %% |\n",
+                r.combination.blur, r.combination.contrast_to_noise, 100 * r.combination.cupping, found,
+                total, r.local.false_pores, volume, diameter, centre, r.iso50.false_pores,
+                r.iso50.classes.at(6).volume_error_percent());
+  }
+}
+
 int print_table(const std::vector<Combination>& combinations) {
   int missed = 0, required_false = 0;
   double required_voxels = 0;
+  std::vector<Result> results;
   for (const Combination& c : combinations) {
     // The same places for all combinations, other noise.
-    const Result result = run(c, 7);
+    results.push_back(run(c, 7));
+    const Result& result = results.back();
     print(result);
     missed += static_cast<int>(result.missed.size());
     Limits limits;
@@ -141,6 +171,7 @@ int print_table(const std::vector<Combination>& combinations) {
     required_false += result.local.false_pores;
     required_voxels += result.searched_voxels;
   }
+  print_summary(results);
   std::printf(
       "\nWhere figures are required: %d false pores in %.1f million voxels, %.1f times 192^3. "
       "Required figures missed: %d.\n",
