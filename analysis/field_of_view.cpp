@@ -1,12 +1,15 @@
 // How padding is recognised
 //
-// Reconstructions of a cylindrical field leave the slices' corners at one constant value. Padding is claimed
-// when rows begin and end with exactly that value, in the same outline in every plane looked at, and when the
-// values just inside keep clear of it: a constant background that blends into the part is air, not padding.
+// Pixels of one and the same value in every plane looked at, which hold a corner of the slices and leave one
+// convex piece, may be padding or constant air. Padding ends within one voxel, where a part's surface rises
+// over several; and just inside it there is noise or, in a volume without noise, another phase than its own.
+// The rule holds for any grey value of the padding, also for one that occurs inside (zero beside clipped
+// air).
 #include "analysis/field_of_view.h"
 
 #include <algorithm>
 #include <cmath>
+#include <cstdint>
 #include <type_traits>
 #include <vector>
 
@@ -16,130 +19,255 @@ namespace halfmark {
 
 namespace {
 
-constexpr int looked_at_planes = 7;
-// Outlines of different planes may differ by this many voxels (rounding of a circle), in this share of the
-// rows.
-constexpr std::int32_t outline_slack = 2;
-constexpr double same_rows_share = 0.95;
-// Less padding than this is not worth leaving out.
-constexpr double least_padding_share = 0.01;
-// Share of the voxels inside that may carry the padding's own value or come near it.
-constexpr double near_padding_share = 0.002;
+// Planes looked at for columns of one value: enough that noise, even half clipped, leaves none by chance.
+constexpr std::int64_t probed_planes = 33;
+// Share of field pixels that may be of the padding's value through all planes (chance, dead pixels).
+constexpr double stray_share = 0.002;
+// A part's surface rises over some voxels, padding ends in one: mean jump of the first field voxel against
+// the third.
+constexpr double sharp_ratio = 0.75;
+// Share of unequal neighbours along the rim from which the field counts as noisy.
+constexpr double noisy_share = 0.2;
+// Without noise, air is as constant as padding: runs this long of the padding's value within the field, if
+// they hold more than this share of it, say that the value is air.
+constexpr std::int64_t bulk_run = 16;
+constexpr double bulk_share = 0.005;
+// Without noise, what is left must show a second phase: share of voxels unlike the rim's.
+constexpr double second_phase_share = 0.005;
 
-using Outline = std::vector<Run>;  // per row; begin == end: all padding
+struct Span {
+  std::int64_t begin = 0, end = 0;
+};
+
+struct Rim {
+  std::vector<std::int64_t> first, third, fourth;  // pixels 1, 3 and 4 inside the field, by in-plane index
+};
+
+// Constant planes at either end of the volume.
+struct BlankEnds {
+  std::int64_t low = 0, high = 0;  // field planes: [low, high)
+};
 
 template <class T>
-Outline outline_of(const T* plane, const std::array<std::int64_t, 3>& size, T padding) {
-  Outline out(static_cast<std::size_t>(size[1]));
-  for (std::int64_t y = 0; y < size[1]; ++y) {
-    const T* row = plane + y * size[0];
-    std::int64_t begin = 0, end = size[0];
-    while (begin < end && row[begin] == padding) ++begin;
-    while (end > begin && row[end - 1] == padding) --end;
-    out[static_cast<std::size_t>(y)] = {static_cast<std::int32_t>(begin), static_cast<std::int32_t>(end)};
-  }
-  return out;
-}
-
-bool is_all_padding(const Outline& outline) {
-  return std::all_of(outline.begin(), outline.end(), [](const Run& r) { return r.begin == r.end; });
-}
-
-bool agree(const Outline& a, const Outline& b) {
-  std::size_t same = 0;
-  for (std::size_t y = 0; y < a.size(); ++y) {
-    const bool both_empty = a[y].begin == a[y].end && b[y].begin == b[y].end;
-    same += both_empty || (std::abs(a[y].begin - b[y].begin) <= outline_slack &&
-                           std::abs(a[y].end - b[y].end) <= outline_slack);
-  }
-  return static_cast<double>(same) >= same_rows_share * static_cast<double>(a.size());
-}
-
-// The larger of two outlines, row by row.
-Outline joined(const Outline& a, const Outline& b) {
-  Outline out = a;
-  for (std::size_t y = 0; y < a.size(); ++y) {
-    if (a[y].begin == a[y].end) {
-      out[y] = b[y];
-    } else if (b[y].begin != b[y].end) {
-      out[y] = {std::min(a[y].begin, b[y].begin), std::max(a[y].end, b[y].end)};
-    }
-  }
-  return out;
+bool is_blank(const T* plane, std::int64_t count) {
+  const T value = plane[0];
+  return std::all_of(plane, plane + count, [value](T v) { return v == value; });
 }
 
 template <class T>
-bool keeps_clear(const T* plane, const std::array<std::int64_t, 3>& size, const Outline& outline, T padding) {
-  std::vector<double> distances;
-  for (std::int64_t y = 0; y < size[1]; ++y) {
-    const Run& run = outline[static_cast<std::size_t>(y)];
-    for (std::int32_t x = run.begin; x < run.end; ++x) {
-      distances.push_back(
-          std::abs(static_cast<double>(plane[y * size[0] + x]) - static_cast<double>(padding)));
-    }
-  }
-  if (distances.empty()) return false;
-  auto fifth = distances.begin() + static_cast<std::ptrdiff_t>(distances.size() / 20);
-  std::nth_element(distances.begin(), fifth, distances.end());
-  const double near = 0.25 * *fifth;
-  const auto close =
-      std::count_if(distances.begin(), distances.end(), [near](double d) { return d <= near; });
-  return static_cast<double>(close) <= near_padding_share * static_cast<double>(distances.size());
-}
+class PaddingSearch {
+ public:
+  PaddingSearch(const VolumeSource& source, const RunControl& control)
+      : source_(source),
+        control_(control),
+        reader_(source),
+        nx_(source.geometry().size[0]),
+        ny_(source.geometry().size[1]),
+        nz_(source.geometry().size[2]) {}
 
-FieldOfView field_of(const Outline& outline, const VolumeGeometry& geometry,
-                     const std::vector<std::uint8_t>& empty_planes, double padding) {
-  FieldOfView field;
-  field.rows = RunMask(geometry.size);
-  for (std::int64_t z = 0; z < geometry.size[2]; ++z) {
-    for (const Run& run : outline) {
-      if (empty_planes[static_cast<std::size_t>(z)] == 0 && run.begin < run.end) {
-        field.rows.add_run(run);
-        field.voxels += run.end - run.begin;
+  FieldOfView find() {
+    BlankEnds ends = blank_ends();
+    if (ends.low >= ends.high) return whole_field(source_.geometry());  // constant volume
+    const bool columns = find_columns(ends) && rim_is_padding(ends);
+    if (ends.low > 0 || ends.high < nz_) {
+      if (columns && blank_grey_ != grey_) ends = {0, nz_};
+      if (!columns && !blank_planes_are_padding(ends)) ends = {0, nz_};
+    }
+    if (!columns) {
+      if (ends.low == 0 && ends.high == nz_) return whole_field(source_.geometry());
+      grey_ = blank_grey_;
+      spans_.assign(static_cast<std::size_t>(ny_), Span{0, nx_});
+    }
+    return as_field(ends);
+  }
+
+ private:
+  const T* plane(std::int64_t z) { return reader_.template planes<T>(z, z + 1); }
+
+  BlankEnds blank_ends() {
+    BlankEnds ends{0, nz_};
+    const std::int64_t count = nx_ * ny_;
+    while (ends.low < nz_) {
+      control_.step("field of view", 0);
+      const T* p = plane(ends.low);
+      if (!is_blank(p, count) || (ends.low > 0 && p[0] != blank_grey_)) break;
+      blank_grey_ = p[0];
+      ++ends.low;
+    }
+    while (ends.high > ends.low) {
+      control_.step("field of view", 0.1);
+      const T* p = plane(ends.high - 1);
+      if (!is_blank(p, count) || ((ends.low > 0 || ends.high < nz_) && p[0] != blank_grey_)) break;
+      blank_grey_ = p[0];
+      --ends.high;
+    }
+    return ends;
+  }
+
+  std::vector<std::int64_t> probes(const BlankEnds& ends) const {
+    std::vector<std::int64_t> out;
+    const std::int64_t count = std::min(probed_planes, ends.high - ends.low);
+    for (std::int64_t i = 0; i < count; ++i) {
+      out.push_back(ends.low + (count > 1 ? i * (ends.high - ends.low - 1) / (count - 1) : 0));
+    }
+    return out;
+  }
+
+  // Columns of one grey value that hold a corner of the slices; false unless they leave one run a row and one
+  // a column.
+  bool find_columns(const BlankEnds& ends) {
+    const std::int64_t count = nx_ * ny_;
+    if (nx_ < 4 || ny_ < 4) return false;
+    const std::vector<std::int64_t> planes = probes(ends);
+    const std::int64_t corners[4] = {0, nx_ - 1, count - nx_, count - 1};
+    T value[4] = {};
+    int votes[4] = {1, 1, 1, 1};
+    for (std::size_t i = 0; i < planes.size(); ++i) {
+      const T* p = plane(planes[i]);
+      for (int k = 0; k < 4; ++k) {
+        if (i == 0) value[k] = p[corners[k]];
+        if (!(p[corners[k]] == value[k])) votes[k] = 0;
       }
-      field.rows.end_row();
     }
+    int best = -1;
+    for (int k = 0; k < 4; ++k) {
+      if (votes[k] == 0) continue;
+      votes[k] = 0;
+      for (int m = 0; m < 4; ++m) votes[k] += value[m] == value[k];
+      if (best < 0 || votes[k] > votes[best]) best = k;
+    }
+    if (best < 0) return false;
+    grey_ = value[best];
+    std::vector<std::uint8_t> padded(static_cast<std::size_t>(count), 1);
+    for (std::size_t i = 0; i < planes.size(); ++i) {
+      control_.step("field of view", 0.2 + 0.3 * static_cast<double>(i) / static_cast<double>(planes.size()));
+      const T* p = plane(planes[i]);
+      for (std::int64_t k = 0; k < count; ++k) {
+        padded[static_cast<std::size_t>(k)] &= static_cast<std::uint8_t>(p[k] == grey_);
+      }
+    }
+    return keep_convex(padded);
   }
-  field.padding_grey = padding;
-  return field;
-}
 
-template <class T>
-std::optional<FieldOfView> look_for_padding(const VolumeSource& source, const RunControl& control) {
-  const VolumeGeometry& geometry = source.geometry();
-  const auto& size = geometry.size;
-  SlabReader reader(source);
-  const std::int64_t middle = size[2] / 2;
-  const T* plane = reader.planes<T>(middle, middle + 1);
-  const T padding = plane[0];
-  const auto is_padding = [&](std::int64_t x, std::int64_t y) { return plane[y * size[0] + x] == padding; };
-  if (!(is_padding(size[0] - 1, 0) && is_padding(0, size[1] - 1) && is_padding(size[0] - 1, size[1] - 1)))
-    return std::nullopt;
+  // Sets spans_ and rim_; false if what the padding leaves has holes or bays.
+  bool keep_convex(const std::vector<std::uint8_t>& padded) {
+    const auto at = [&](std::int64_t x, std::int64_t y) {
+      return padded[static_cast<std::size_t>(y * nx_ + x)];
+    };
+    spans_.assign(static_cast<std::size_t>(ny_), Span{});
+    rim_ = {};
+    std::int64_t field = 0, strays = 0;
+    const auto scan = [&](std::int64_t length, auto&& pixel_padded, auto&& index) {
+      Span span{0, length};
+      while (span.begin < length && pixel_padded(span.begin)) ++span.begin;
+      while (span.end > span.begin && pixel_padded(span.end - 1)) --span.end;
+      for (std::int64_t i = span.begin; i < span.end; ++i) strays += pixel_padded(i);
+      if (span.end - span.begin >= 8) {
+        if (span.begin > 0) add_rim(index, span.begin, 1);
+        if (span.end < length) add_rim(index, span.end - 1, -1);
+      }
+      return span;
+    };
+    for (std::int64_t y = 0; y < ny_; ++y) {
+      const Span span = scan(
+          nx_, [&](std::int64_t x) { return at(x, y); }, [&](std::int64_t x) { return y * nx_ + x; });
+      spans_[static_cast<std::size_t>(y)] = span;
+      field += span.end - span.begin;
+    }
+    for (std::int64_t x = 0; x < nx_; ++x) {
+      scan(
+          ny_, [&](std::int64_t y) { return at(x, y); }, [&](std::int64_t y) { return y * nx_ + x; });
+    }
+    return field < nx_ * ny_ && !rim_.first.empty() &&
+           static_cast<double>(strays) <= 2 * stray_share * static_cast<double>(field);
+  }
 
-  Outline outline = outline_of(plane, size, padding);
-  if (is_all_padding(outline)) return std::nullopt;
-  if (!keeps_clear(plane, size, outline, padding)) return std::nullopt;
-  for (int i = 0; i < looked_at_planes; ++i) {
-    control.throw_if_cancelled();
-    const std::int64_t z = (size[2] - 1) * i / (looked_at_planes - 1);
-    const Outline other = outline_of(reader.planes<T>(z, z + 1), size, padding);
-    if (is_all_padding(other)) continue;
-    if (!agree(outline, other)) return std::nullopt;
-    outline = joined(outline, other);
+  template <class Index>
+  void add_rim(const Index& index, std::int64_t start, std::int64_t step) {
+    rim_.first.push_back(index(start));
+    rim_.third.push_back(index(start + 2 * step));
+    rim_.fourth.push_back(index(start + 3 * step));
   }
-  std::vector<std::uint8_t> empty_planes(static_cast<std::size_t>(size[2]), 0);
-  for (std::int64_t z = 0; z < size[2]; ++z) {
-    const T* p = reader.planes<T>(z, z + 1);
-    empty_planes[static_cast<std::size_t>(z)] =
-        std::all_of(p, p + size[0] * size[1], [padding](T v) { return v == padding; });
+
+  // The rim is one voxel sharp, and the field differs from the padding by its noise or its phases.
+  bool rim_is_padding(const BlankEnds& ends) {
+    double jump_first = 0, jump_third = 0, unequal = 0, rims = 0, unlike_rim = 0, in_bulk = 0, voxels = 0;
+    const auto centre = static_cast<double>(grey_);
+    T rim_grey{};
+    bool first_plane = true;
+    for (const std::int64_t z : probes(ends)) {
+      control_.step("field of view", 0.7);
+      const T* p = plane(z);
+      if (first_plane) rim_grey = p[rim_.third.front()];
+      first_plane = false;
+      for (std::size_t i = 0; i < rim_.first.size(); ++i) {
+        jump_first += std::abs(static_cast<double>(p[rim_.first[i]]) - centre);
+        jump_third += std::abs(static_cast<double>(p[rim_.third[i]]) - centre);
+        unequal += p[rim_.third[i]] != p[rim_.fourth[i]];
+      }
+      rims += static_cast<double>(rim_.first.size());
+      for (std::int64_t y = 0; y < ny_; ++y) {
+        const Span span = spans_[static_cast<std::size_t>(y)];
+        std::int64_t run = 0;
+        for (std::int64_t x = span.begin; x < span.end; ++x) {
+          const T v = p[y * nx_ + x];
+          unlike_rim += v != rim_grey && v != grey_;
+          run = v == grey_ ? run + 1 : 0;
+          if (run == bulk_run) in_bulk += static_cast<double>(bulk_run);
+          if (run > bulk_run) in_bulk += 1;
+        }
+        voxels += static_cast<double>(span.end - span.begin);
+      }
+    }
+    if (!(jump_first > 0) || !(jump_first >= sharp_ratio * jump_third)) return false;
+    if (unequal >= noisy_share * rims) return true;
+    return in_bulk <= bulk_share * voxels && unlike_rim >= second_phase_share * voxels;
   }
-  FieldOfView field = field_of(outline, geometry, empty_planes, static_cast<double>(padding));
-  const double left_out = 1 - static_cast<double>(field.voxels) / static_cast<double>(geometry.voxel_count());
-  if (left_out < least_padding_share || field.voxels == 0) return std::nullopt;
-  return field;
-}
+
+  // Blank planes at the ends are padding if the next plane is not mostly of their value (as noise-free air
+  // around a part would be).
+  bool blank_planes_are_padding(const BlankEnds& ends) {
+    const auto mostly_blank = [&](std::int64_t z) {
+      const T* p = plane(z);
+      return 2 * std::count(p, p + nx_ * ny_, blank_grey_) > nx_ * ny_;
+    };
+    if (ends.low > 0 && mostly_blank(ends.low)) return false;
+    return !(ends.high < nz_ && mostly_blank(ends.high - 1));
+  }
+
+  FieldOfView as_field(const BlankEnds& ends) const {
+    FieldOfView field;
+    field.rows = RunMask(source_.geometry().size);
+    field.padding_grey = static_cast<double>(grey_);
+    for (std::int64_t z = 0; z < nz_; ++z) {
+      for (const Span& span : spans_) {
+        if (z >= ends.low && z < ends.high && span.end > span.begin) {
+          field.rows.add_run({static_cast<std::int32_t>(span.begin), static_cast<std::int32_t>(span.end)});
+          field.voxels += span.end - span.begin;
+        }
+        field.rows.end_row();
+      }
+    }
+    return field;
+  }
+
+  const VolumeSource& source_;
+  const RunControl& control_;
+  SlabReader reader_;
+  std::int64_t nx_, ny_, nz_;
+  T grey_{}, blank_grey_{};
+  std::vector<Span> spans_;
+  Rim rim_;
+};
 
 }  // namespace
+
+FieldOfView find_field_of_view(const VolumeSource& source, const RunControl& control) {
+  return visit_voxel_type(source.voxel_type(), [&](auto* type) {
+    using T = std::remove_pointer_t<decltype(type)>;
+    return PaddingSearch<T>(source, control).find();
+  });
+}
 
 FieldOfView whole_field(const VolumeGeometry& geometry) {
   FieldOfView field;
@@ -150,13 +278,6 @@ FieldOfView whole_field(const VolumeGeometry& geometry) {
   }
   field.voxels = geometry.voxel_count();
   return field;
-}
-
-FieldOfView find_field_of_view(const VolumeSource& source, const RunControl& control) {
-  const auto found = visit_voxel_type(source.voxel_type(), [&](auto* type) {
-    return look_for_padding<std::remove_pointer_t<decltype(type)>>(source, control);
-  });
-  return found ? *found : whole_field(source.geometry());
 }
 
 }  // namespace halfmark

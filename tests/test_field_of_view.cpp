@@ -1,3 +1,4 @@
+#include <algorithm>
 #include <cmath>
 #include <cstdlib>
 
@@ -70,4 +71,60 @@ TEST_CASE("air is not taken for padding") {
   ScanModel clean = noisy_scan();
   clean.noise_grey = 0;  // a volume without noise
   CHECK(find_field_of_view(render_scan(block(), phantoms::cube_geometry(64), clean)).whole());
+}
+
+TEST_CASE("padding is found whatever lies beside it") {
+  const VolumeGeometry geometry = phantoms::cube_geometry(64);
+  ScanModel scan;
+  scan.type = VoxelType::u8;
+  scan.air_grey = 5;
+  scan.material_grey = 160;
+  scan.noise_grey = 15;
+  scan.padding_radius_mm = 30.2;
+  // Pixels of a plane within the radius about the slice's centre at 31.5.
+  std::int64_t inside = 0;
+  for (int y = 0; y < 64; ++y) {
+    for (int x = 0; x < 64; ++x) inside += (x - 31.5) * (x - 31.5) + (y - 31.5) * (y - 31.5) <= 30.2 * 30.2;
+  }
+  const auto voxels_found = [&](const std::vector<ScannedBody>& bodies) {
+    return find_field_of_view(render_scan(bodies, geometry, scan)).voxels;
+  };
+  // Zero beside air of which a third is clipped to zero.
+  CHECK(voxels_found(block()) == 64 * inside);
+  // The air's own grey value.
+  scan.air_grey = scan.padding_grey = 30;
+  CHECK(voxels_found(block()) == 64 * inside);
+  // Material that fills the field and is cut by it.
+  scan.padding_grey = 0;
+  CHECK(voxels_found({{box({-9, -9, 8}, {80, 80, 80}), 1}, {sphere({32, 32, 32}, 8), 0}}) == 64 * inside);
+  // No noise at all.
+  scan.noise_grey = 0;
+  CHECK(voxels_found(block()) == 64 * inside);
+  // A source that is read plane by plane sees the same.
+  scan.noise_grey = 15;
+  CHECK(find_field_of_view(*scan_of(block(), geometry, scan)).voxels == 64 * inside);
+}
+
+TEST_CASE("a frame on one side is left out") {
+  MemoryVolume volume = render_scan(block(), phantoms::cube_geometry(64), noisy_scan());
+  std::uint16_t* v = volume.voxels<std::uint16_t>();
+  for (std::int64_t r = 0; r < 64 * 64; ++r) std::fill(v + r * 64, v + r * 64 + 9, std::uint16_t{0});
+  CHECK(find_field_of_view(volume).voxels == 55 * 64 * 64);
+}
+
+TEST_CASE("constant air around a round part through all planes is no padding") {
+  const std::vector<ScannedBody> rod{{cylinder({32, 32, -20}, {32, 32, 90}, 25), 1},
+                                     {sphere({32, 32, 32}, 7), 0}};
+  ScanModel clean = noisy_scan();
+  clean.noise_grey = 0;
+  CHECK(find_field_of_view(render_scan(rod, phantoms::cube_geometry(64), clean)).whole());
+  for (const double blur : {0.5, 1.0}) {
+    ScanModel clipped = noisy_scan();
+    clipped.type = VoxelType::u8;
+    clipped.blur_voxel = blur;
+    clipped.air_grey = -8;
+    clipped.material_grey = 160;
+    clipped.noise_grey = 1.5;
+    CHECK(find_field_of_view(render_scan(rod, phantoms::cube_geometry(64), clipped)).whole());
+  }
 }
