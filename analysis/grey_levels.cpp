@@ -24,13 +24,19 @@ namespace {
 constexpr double least_separation = 3;
 // A lag-1 correlation beyond this is no accident of some thousand voxels.
 constexpr double white_limit = 0.04;
+// Noise of a mean of 27 voxels: a fifth where it is white, more where it is correlated.
+constexpr double block_mean_noise = 0.3;
 // Beyond this many noises a voxel of a thousand is no accident.
 constexpr double noise_tail = 4.5;
 constexpr double assumed_blur_voxel = 0.8;
 constexpr double clipped_share_worth_a_word = 0.001;
-// A further peak is worth a word when its valleys reach below half of its height; lesser humps are partial
-// volumes.
+// A further peak is worth a word when its valleys reach below half of its height and homogeneous blocks of it
+// are found; faces along the voxel axes and noise-free edges make peaks of partial volumes too.
 constexpr double further_peak_valley = 0.5;
+constexpr double further_peak_width = 0.04;  // of the contrast, where noise is less
+// Blocks up to this share of the contrast above the material's level may be material (cupping); beyond lie
+// inclusions and their rims.
+constexpr double highest_material = 0.2;
 // Mode finding of a peak of width s scatters by about this share of s (binning, smoothing, cupping within the
 // peak).
 constexpr double mode_scatter = 0.05;
@@ -89,18 +95,27 @@ void choose_modes(const HistogramShape& shape, double noise, const GreySpec& giv
              "or give grey_levels in the spec",
              out.air, out.material));
   }
-  for (const GreyMode& mode : modes) {
-    const double near = std::max(2 * noise, 0.05 * (out.material - out.air));
-    if (mode.valley < further_peak_valley * mode.height && std::abs(mode.grey - out.air) > near &&
-        std::abs(mode.grey - out.material) > near)
+}
+
+// Modes apart from air and material that are phases: somewhere whole blocks show their grey.
+void find_other_phases(const VolumeSource& source, const SampleWindows& windows, const FieldOfView& field,
+                       const HistogramShape& shape, double noise, GreyLevels& out) {
+  const double near = std::max(2 * noise, 0.05 * out.contrast());
+  const double width = std::max(noise_tail * noise, further_peak_width * out.contrast());
+  for (const GreyMode& mode : shape.modes) {
+    if (mode.valley >= further_peak_valley * mode.height || std::abs(mode.grey - out.air) <= near ||
+        std::abs(mode.grey - out.material) <= near)
+      continue;
+    if (estimate_noise(source, windows, field, mode.grey - width, mode.grey + width).blocks > 0)
       out.other_peaks.push_back(mode.grey);
   }
 }
 
 // A mode leans towards the partial volumes between the phases when it is broad; the mean of blocks off any
 // edge does not.
-double refined_level(double mode, const NoiseEstimate& blocks) {
-  const bool sound = blocks.large_blocks && std::abs(blocks.level - mode) < blocks.deviation;
+double refined_level(double mode, const NoiseEstimate& blocks, double first_noise) {
+  const bool sound =
+      blocks.large_blocks && std::abs(blocks.level - mode) < std::max(blocks.deviation, first_noise);
   return sound ? blocks.level : mode;
 }
 
@@ -109,12 +124,13 @@ void measure_noise(const VolumeSource& source, const SampleWindows& windows, con
   const double inf = 1e300;
   // At low contrast-to-noise the threshold itself would cut the tails of the noise.
   const double tail = noise_tail * first_noise;
-  const NoiseEstimate material = estimate_noise(
-      source, windows, field, std::min(out.threshold, out.material - tail), out.material + out.contrast());
+  const NoiseEstimate material =
+      estimate_noise(source, windows, field, std::min(out.threshold, out.material - tail),
+                     out.material + std::max(tail, highest_material * out.contrast()));
   const NoiseEstimate air =
       estimate_noise(source, windows, field, -inf, std::max(out.threshold, out.air + tail));
-  if (!given.air) out.air = refined_level(out.air, air);
-  if (!given.material) out.material = refined_level(out.material, material);
+  if (!given.air) out.air = refined_level(out.air, air, first_noise);
+  if (!given.material) out.material = refined_level(out.material, material, first_noise);
   out.threshold = 0.5 * (out.air + out.material);
   out.material_seen = material.blocks > 0;
   out.air_seen = air.blocks > 0;
@@ -180,11 +196,18 @@ GreyLevels find_grey_levels(const VolumeSource& source, const FieldOfView& field
   const SampleWindows windows(source);
   const double first_noise = std::max(commonest_deviation(source, windows, field), 0.0);
   const bool integers = source.voxel_type() != VoxelType::f32;
-  const HistogramShape shape = find_modes(out.histogram, first_noise, integers);
+  HistogramShape shape = find_modes(out.histogram, first_noise, integers);
+  if (shape.modes.size() < 2 && !(given.air && given.material)) {
+    // Noise may bridge the valley between the phases; means over small blocks have a fifth of it.
+    const HistogramShape calm =
+        find_modes(block_means(source, windows, field), block_mean_noise * first_noise, false);
+    if (calm.modes.size() >= 2) shape.modes = calm.modes;
+  }
   choose_modes(shape, first_noise, given, out);
   out.threshold = 0.5 * (out.air + out.material);
   control.step("grey levels", 0.6);
   measure_noise(source, windows, field, first_noise, given, out);
+  find_other_phases(source, windows, field, shape, first_noise, out);
   control.step("grey levels", 0.8);
   measure_blur(source, windows, field, out);
   out.threshold_standard_uncertainty =

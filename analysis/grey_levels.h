@@ -28,7 +28,7 @@ struct GreyLevels {
   double blur_voxel = 0;  // blur_mm in units of VolumeGeometry::voxel_mm()
   double blur_standard_uncertainty_voxel = 0;
   bool blur_measured = false;  // false: no sound edges; blur_voxel is a stated assumption
-  // Autocorrelation of the material's noise at lag 1 along x, y, z; white noise is 0 within +-0.02.
+  // Autocorrelation of the material's noise at lag 1 along x, y, z; called white within +-0.04.
   std::array<double, 3> noise_correlation{0, 0, 0};
   bool noise_is_white = true;
   double threshold_standard_uncertainty = 0;  // grey values

@@ -32,6 +32,21 @@ double occupied_spacing(const std::vector<std::int64_t>& counts) {
   return occupied < 2 ? 1 : static_cast<double>(last - first) / static_cast<double>(occupied - 1);
 }
 
+// A phase that lies in the type's end value altogether is a peak; what is clipped off a peak beside it is
+// none. The phase is taken to lie there when the end holds this many times what its neighbours within three
+// noises hold.
+constexpr double whole_phase_factor = 3;
+
+bool holds_a_phase(const std::vector<std::int64_t>& counts, bool at_low_end, double noise_bins) {
+  const auto reach = std::min<std::size_t>(
+      counts.size() - 1, static_cast<std::size_t>(std::max(3.0, std::ceil(3 * noise_bins))));
+  double beside = 0;
+  for (std::size_t k = 1; k <= reach; ++k)
+    beside += static_cast<double>(at_low_end ? counts[k] : counts[counts.size() - 1 - k]);
+  const double end = static_cast<double>(at_low_end ? counts.front() : counts.back());
+  return end > whole_phase_factor * beside;
+}
+
 // The counts without the clipped ends, several bins joined where there are very many over little range.
 Counts working_counts(const Histogram& h, bool integer_type, double noise) {
   std::size_t first = 0, last = h.counts.size() - 1;
@@ -39,8 +54,9 @@ Counts working_counts(const Histogram& h, bool integer_type, double noise) {
   while (last > first && h.counts[last] == 0) --last;
   std::vector<std::int64_t> counts = h.counts;
   if (integer_type && last - first > 8) {  // the ends hold what was clipped
-    if (first == 0) counts[0] = 0;
-    if (last + 1 == counts.size()) counts[last] = 0;
+    const double noise_bins = noise / h.bin_width;
+    if (first == 0 && !holds_a_phase(h.counts, true, noise_bins)) counts[0] = 0;
+    if (last + 1 == counts.size() && !holds_a_phase(h.counts, false, noise_bins)) counts[last] = 0;
   }
   const double span = static_cast<double>(last - first + 1);
   const double by_noise = std::max(1.0, noise / h.bin_width / 16);

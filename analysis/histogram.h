@@ -5,8 +5,9 @@
 
 namespace halfmark {
 
-// Integer voxels: one bin a grey value. Float voxels: 65,536 bins between the least and the greatest value.
-// Throws Problem(bad_data) for NaN and infinity, naming the first voxel and how many there are.
+// Integer voxels: one bin a grey value. Float voxels: 65,536 bins over the bulk of the values, what lies
+// beyond in the end bins. Throws Problem(bad_data) for NaN and infinity, naming the first voxel and how many
+// there are.
 Histogram count_greys(const VolumeSource& source, const FieldOfView& field, const RunControl& control = {});
 
 }  // namespace halfmark

@@ -5,6 +5,7 @@
 #include <array>
 
 #include "analysis/field_of_view.h"
+#include "analysis/grey_levels.h"
 #include "analysis/sample_windows.h"
 
 namespace halfmark {
@@ -20,6 +21,9 @@ struct NoiseEstimate {
 // Blocks whose surroundings lie wholly above `low` and below `high`.
 NoiseEstimate estimate_noise(const VolumeSource& source, const SampleWindows& windows,
                              const FieldOfView& field, double low, double high);
+
+// Histogram of the means of 3 x 3 x 3 voxels at places of a grid.
+Histogram block_means(const VolumeSource& source, const SampleWindows& windows, const FieldOfView& field);
 
 // A first scale before any level is known: the commonest deviation among small blocks.
 double commonest_deviation(const VolumeSource& source, const SampleWindows& windows,

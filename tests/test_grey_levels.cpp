@@ -183,3 +183,83 @@ TEST_CASE("levels of the spec are taken as given") {
   CHECK(std::abs(one.air - 20000) < 0.025 * 25000);
   CHECK(one.source == "spec, auto");
 }
+
+namespace {
+
+// A rod through air, of 96 voxels cubed.
+std::vector<ScannedBody> rod() { return {{cylinder({47, 46, 10}, {50, 49, 86}, 22), 1}}; }
+
+void check_levels(const GreyLevels& levels, double air, double material, double noise, double share = 0.015) {
+  CAPTURE(levels.air, air, levels.material, material, levels.material_noise, noise, levels.blur_voxel);
+  CHECK(std::abs(levels.air - air) < share * (material - air));
+  CHECK(std::abs(levels.material - material) < share * (material - air));
+  CHECK(levels.material_noise == Approx(noise).epsilon(0.06));
+}
+
+}  // namespace
+
+TEST_CASE("air or material that is clipped to one value is still a phase") {
+  const auto geometry = phantoms::cube_geometry(96);
+  ScanModel scan = scan_model(0.8, 20, 0);
+  scan.air_grey = -9000;  // every voxel of the air ends at 0
+  scan.material_grey = 45000;
+  scan.noise_grey = 1250;
+  const GreyLevels dark = levels_of(render_scan(rod(), geometry, scan));
+  check_levels(dark, 0, 45000, 1250);
+  CHECK_FALSE(dark.warnings.empty());
+
+  scan.air_grey = 20000;
+  scan.material_grey = 75000;
+  const GreyLevels bright = levels_of(render_scan(rod(), geometry, scan));
+  CAPTURE(bright.air, bright.material);
+  CHECK(std::abs(bright.air - 20000) < 700);
+  CHECK(bright.material == 65535);
+
+  scan.type = VoxelType::u8;
+  scan.air_grey = -20;
+  scan.material_grey = 180;
+  scan.noise_grey = 5;
+  check_levels(levels_of(render_scan(rod(), geometry, scan)), 0, 180, 5);
+}
+
+TEST_CASE("dense inclusions leave the material's noise and level alone") {
+  auto bodies = block().bodies;
+  phantoms::Uniform random(3);
+  for (int i = 0; i < 60; ++i)
+    bodies.push_back({sphere({random(20, 80), random(20, 80), random(20, 80)}, 4), 1.5});
+  check_levels(levels_of(render_scan(bodies, block().geometry, scan_model(0.8, 20, 0))), 20000, 45000, 1250);
+}
+
+TEST_CASE("one voxel of a huge value does not hide the phases of a float volume") {
+  ScanModel scan = scan_model(0.8, 20, 0);
+  scan.type = VoxelType::f32;
+  MemoryVolume volume = render_scan(block().bodies, block().geometry, scan);
+  volume.voxels<float>()[1234567 % volume.geometry().voxel_count()] = 1e9f;
+  volume.voxels<float>()[777] = -1e12f;
+  check_levels(levels_of(volume), 20000, 45000, 1250);
+}
+
+TEST_CASE("partial volumes are no further phase") {
+  const auto geometry = phantoms::cube_geometry(96);
+  for (const double noise : {0.0, 200.0, 1250.0}) {
+    for (const double blur : {0.3, 0.8}) {
+      ScanModel scan = scan_model(blur, 20, 0);
+      scan.noise_grey = noise;
+      // Faces along the voxel axes, at thirds of a voxel.
+      const std::vector<ScannedBody> bodies{{box({15.3, 14.7, 16.1}, {80.4, 79.7, 81.2}), 1},
+                                            {box({30.3, 30.7, 30.1}, {50.4, 50.7, 50.2}), 0}};
+      const GreyLevels levels = levels_of(render_scan(bodies, geometry, scan));
+      CAPTURE(noise, blur, levels.other_peaks.size(), levels.air, levels.material);
+      CHECK(levels.other_peaks.empty());
+      CHECK(std::abs(levels.air - 20000) < 250);
+      CHECK(std::abs(levels.material - 45000) < 250);
+    }
+  }
+}
+
+TEST_CASE("contrast-to-noise of 4 carries levels") {
+  for (const double cnr : {4.0, 3.5}) {
+    check_levels(levels_of(render_scan(rod(), phantoms::cube_geometry(96), scan_model(0.8, cnr, 0))), 20000,
+                 45000, 25000 / cnr, 0.02);
+  }
+}
