@@ -1,0 +1,101 @@
+// Porosities: of the zone, of its open pores, of its worst section and of its worst reference body.
+#include <algorithm>
+#include <cmath>
+
+#include "analysis/moving_porosity.h"
+#include "analysis/requirement_context.h"
+
+namespace halfmark {
+
+namespace {
+
+void moving(RequirementContext& c, const std::optional<WorstPlace>& worst, const std::string& nothing,
+            const std::string& what) {
+  if (!worst) return c.none(nothing, false);
+  // The same relative uncertainty as all of the zone's porosity, and the step of the moving body.
+  const auto t = c.total(c.zone_sums(), false);
+  double u = 0;
+  for (const Contribution& p : t.contributions) u += p.standard_uncertainty * p.standard_uncertainty;
+  const double relative = t.voxels > 0 ? std::sqrt(u) / t.voxels : 0;
+  c.set(worst->percent,
+        {{"pore volumes", worst->percent * relative}, {"steps of the moving body", 0.02 * worst->percent}});
+  c.result.evidence = {0, c.measured.geometry.index_to_mm(worst->index), worst->extent_mm, what};
+}
+
+}  // namespace
+
+void measure_porosity(RequirementContext& c, bool only_open) {
+  const ZoneSums sums = c.zone_sums();
+  if (sums.part_voxels == 0) return c.none("the zone holds no part", false);
+  auto t = c.total(sums, only_open);
+  const double scale = 100 / static_cast<double>(sums.part_voxels);
+  for (Contribution& p : t.contributions) p.standard_uncertainty *= scale;
+  c.set(std::max(0.0, t.voxels * scale), t.contributions);
+  if (t.largest != nullptr) {
+    c.point_at(*t.largest, only_open ? "open porosity, largest pore" : "porosity, largest pore");
+  } else {
+    c.result.evidence.what = only_open ? "open porosity, no open pore found" : "porosity, no pore found";
+  }
+}
+
+void measure_section_porosity(RequirementContext& c) {
+  const MeasuredPart& m = c.measured;
+  std::optional<WorstPlace> worst;
+  for (int axis = 0; axis < 3; ++axis) {
+    if (c.requirement.axis && *c.requirement.axis != axis) continue;
+    const auto place = worst_section(m.pores.field, c.counts, m.part, c.zones, c.zone, m.geometry, axis,
+                                     c.requirement.window_mm);
+    if (place && (!worst || place->percent > worst->percent)) worst = place;
+  }
+  std::string what = "section";
+  if (worst) {
+    const double at = m.geometry.index_to_mm(worst->index)[static_cast<std::size_t>(worst->axis)];
+    what = std::string(c.requirement.window_mm ? "window in section " : "section ") + "xyz"[worst->axis] +
+           number_text(" = %.4g mm", at);
+  }
+  moving(c, worst, "no window of that size lies in the zone with at least 80 % part", what);
+}
+
+void measure_local_porosity(RequirementContext& c) {
+  const MeasuredPart& m = c.measured;
+  const auto worst =
+      worst_reference(m.pores.field, c.counts, m.part, c.zones, c.zone, m.geometry, *c.requirement.reference);
+  moving(c, worst, "no reference body of that size lies in the zone with at least 80 % part",
+         c.requirement.reference->sphere ? "reference sphere" : "reference cube");
+}
+
+PoreSummary summarise_pores(const MeasuredPart& m, const ZoneSet& zones) {
+  (void)zones;
+  PoreSummary out;
+  double variance = 0, open = 0;
+  for (const Pore& p : m.pores.pores) {
+    if (p.left_out || !p.disposition.empty()) continue;
+    out.inclusions += p.kind == PoreKind::inclusion;
+    out.in_between += p.kind == PoreKind::in_between;
+    if (!is_void(p)) continue;
+    ++out.count;
+    out.closed += p.kind == PoreKind::closed;
+    out.open += p.open;
+    out.cut_by_field += p.cut_by_field;
+    out.diffuse += p.kind == PoreKind::diffuse;
+    out.volume_mm3.value += p.volume_mm3.value;
+    variance += p.volume_mm3.standard_uncertainty * p.volume_mm3.standard_uncertainty;
+    if (p.open) open += p.volume_mm3.value;
+  }
+  // Threshold and window errors are common to all pores; noise and level are each pore's own.
+  double common = 0;
+  for (const Pore& p : m.pores.pores) {
+    if (p.left_out || !p.disposition.empty() || !is_void(p)) continue;
+    for (const Contribution& c : p.volume_mm3.contributions) {
+      if (c.name == "threshold" || c.name == "window") common += c.standard_uncertainty;
+    }
+  }
+  out.volume_mm3.standard_uncertainty = std::sqrt(variance + common * common);
+  const double part_mm3 = static_cast<double>(m.part.inside.voxel_count()) * m.geometry.voxel_volume_mm3();
+  out.porosity_percent.value = 100 * out.volume_mm3.value / part_mm3;
+  out.porosity_percent.standard_uncertainty = 100 * out.volume_mm3.standard_uncertainty / part_mm3;
+  out.open_porosity_percent = 100 * open / part_mm3;
+  return out;
+}
+
+}  // namespace halfmark

@@ -1,0 +1,97 @@
+#include "analysis/requirement_context.h"
+
+#include <algorithm>
+#include <cmath>
+#include <cstdio>
+
+namespace halfmark {
+
+std::string number_text(const char* format, double a, double b) {
+  char out[200];
+  std::snprintf(out, sizeof out, format, a, b);
+  return out;
+}
+
+bool is_void(const Pore& pore) {
+  return pore.kind != PoreKind::inclusion && pore.kind != PoreKind::in_between;
+}
+
+RequirementContext::RequirementContext(const Requirement& r, const InspectionSpec& s, const ZoneSet& z,
+                                       const MeasuredPart& m, const RunControl& run)
+    : requirement(r), spec(s), zones(z), measured(m), control(run), zone(z.index_of(r.zone)) {
+  result.requirement = r;
+  result.unit = unit_of(r.quantity, r.relative);
+  const bool inclusions =
+      r.quantity == Quantity::inclusion_diameter || r.quantity == Quantity::inclusion_count;
+  counts.assign(m.pores.pores.size() + 1, 0);
+  for (const Pore& p : m.pores.pores) {
+    if (p.left_out || !p.disposition.empty()) continue;
+    if (r.ignore_below_mm && p.equivalent_diameter_mm < *r.ignore_below_mm) continue;
+    if (is_void(p) && !inclusions) counts[static_cast<std::size_t>(p.id)] = 1;
+    const bool fits = inclusions ? p.kind == PoreKind::inclusion : is_void(p) && p.kind != PoreKind::diffuse;
+    if (fits && std::find(p.zones.begin(), p.zones.end(), r.zone) != p.zones.end()) pores.push_back(&p);
+  }
+}
+
+bool RequirementContext::any_cut() const {
+  return std::any_of(pores.begin(), pores.end(), [](const Pore* p) { return p->cut_by_field; });
+}
+
+void RequirementContext::set(double value, std::vector<Contribution> contributions) {
+  result.has_value = true;
+  result.measured.value = value;
+  double sum = 0;
+  for (const Contribution& c : contributions) sum += c.standard_uncertainty * c.standard_uncertainty;
+  result.measured.standard_uncertainty = std::sqrt(sum);
+  result.measured.contributions = std::move(contributions);
+}
+
+void RequirementContext::point_at(const Pore& p, const std::string& what) {
+  result.evidence = {p.id, p.centre_mm, std::max(p.length_mm, p.equivalent_diameter_mm),
+                     what + " " + std::to_string(p.id)};
+}
+
+void RequirementContext::none(const std::string& reason, bool met) {
+  result.reason = reason;
+  result.met_without_value = met;
+}
+
+ZoneSums RequirementContext::zone_sums() const {
+  return sum_zone(measured.pores.field, measured.pores.pores.size(), measured.part, zones, zone);
+}
+
+RequirementContext::Total RequirementContext::total(const ZoneSums& sums, bool only_open) const {
+  Total out;
+  double noise = 0, level = 0, threshold = 0, window = 0, most = 0;
+  const double voxel = measured.geometry.voxel_volume_mm3();
+  for (const Pore& p : measured.pores.pores) {
+    if (counts[static_cast<std::size_t>(p.id)] == 0 || (only_open && !p.open)) continue;
+    const double share = static_cast<double>(sums.pore[static_cast<std::size_t>(p.id)]) / PoreField::unit;
+    if (share == 0) continue;
+    out.voxels += share;
+    if (share > most) {
+      most = share;
+      out.largest = &p;
+    }
+    const double part = std::clamp(share * voxel / std::max(p.volume_mm3.value, 1e-300), 0.0, 1.0);
+    for (const Contribution& c : p.volume_mm3.contributions) {
+      const double u = part * c.standard_uncertainty / voxel;
+      if (c.name == "noise") {
+        noise += u * u;
+      } else if (c.name == "local level") {
+        level += u * u;  // largely each ring's own noise
+      } else if (c.name == "threshold") {
+        threshold += u;
+      } else {
+        window += u;
+      }
+    }
+  }
+  out.contributions = {{"noise", std::sqrt(noise)},
+                       {"local level", std::sqrt(level)},
+                       {"threshold", threshold},
+                       {"window and digitisation", window}};
+  return out;
+}
+
+}  // namespace halfmark
