@@ -125,28 +125,64 @@ void check_closed(const TriangleMesh& mesh, const std::string& place) {
                                             " edges do not join two triangles; repair it");
 }
 
-// Where the row crosses the mesh's surface, sorted, in voxels along x.
-std::vector<double> crossings(const TriangleMesh& mesh, const VolumeGeometry& g, std::int64_t y,
-                              std::int64_t z) {
-  std::vector<double> out;
-  for (const auto& t : mesh.triangles) {
-    Vec3 p[3];
-    for (std::size_t i = 0; i < 3; ++i) {
-      const auto& v = mesh.vertices_mm[t[i]];
-      p[i] = g.mm_to_index({v[0], v[1], v[2]});
+// Where the rows of voxels cross a mesh's surface.
+class MeshRows {
+ public:
+  MeshRows(const TriangleMesh& mesh, const VolumeGeometry& g)
+      : mesh_(mesh), rows_(g.size[1]), of_plane_(static_cast<std::size_t>(g.size[2])) {
+    for (const auto& v : mesh.vertices_mm) {
+      Vec3 p = g.mm_to_index({v[0], v[1], v[2]});
       // Rows that meet a corner exactly are moved aside by a hair, all alike, so that each crossing counts
       // once.
-      p[i][1] -= static_cast<double>(y) + 1.3e-7;
-      p[i][2] -= static_cast<double>(z) + 0.7e-7;
+      p[1] -= 1.3e-7;
+      p[2] -= 0.7e-7;
+      at_.push_back(p);
     }
-    const auto side = [&](int i, int j) { return p[i][1] * p[j][2] - p[j][1] * p[i][2]; };
-    const double a = side(1, 2), b = side(2, 0), c = side(0, 1);
-    if (!((a > 0 && b > 0 && c > 0) || (a < 0 && b < 0 && c < 0))) continue;
-    out.push_back((a * p[0][0] + b * p[1][0] + c * p[2][0]) / (a + b + c));
+    for (std::uint32_t t = 0; t < mesh.triangles.size(); ++t) {
+      const Span planes = span_of(t, 2, g.size[2]);
+      for (std::int64_t z = planes.first; z <= planes.last; ++z)
+        of_plane_[static_cast<std::size_t>(z)].push_back(t);
+    }
   }
-  std::sort(out.begin(), out.end());
-  return out;
-}
+
+  // In voxels along x, sorted, by row of plane z.
+  void plane(std::int64_t z, std::vector<std::vector<double>>& crossings) const {
+    crossings.assign(static_cast<std::size_t>(rows_), {});
+    for (const std::uint32_t t : of_plane_[static_cast<std::size_t>(z)]) {
+      const Span rows = span_of(t, 1, rows_);
+      for (std::int64_t y = rows.first; y <= rows.last; ++y) {
+        Vec3 p[3];
+        for (std::size_t i = 0; i < 3; ++i)
+          p[i] = at_[mesh_.triangles[t][i]] - Vec3{0, static_cast<double>(y), static_cast<double>(z)};
+        const auto side = [&](int i, int j) { return p[i][1] * p[j][2] - p[j][1] * p[i][2]; };
+        const double a = side(1, 2), b = side(2, 0), c = side(0, 1);
+        if (!((a > 0 && b > 0 && c > 0) || (a < 0 && b < 0 && c < 0))) continue;
+        crossings[static_cast<std::size_t>(y)].push_back((a * p[0][0] + b * p[1][0] + c * p[2][0]) /
+                                                         (a + b + c));
+      }
+    }
+    for (auto& row : crossings) std::sort(row.begin(), row.end());
+  }
+
+ private:
+  struct Span {
+    std::int64_t first = 0, last = -1;
+  };
+  // The rows or planes within a triangle's reach along an axis.
+  Span span_of(std::uint32_t triangle, std::size_t axis, std::int64_t size) const {
+    const auto& t = mesh_.triangles[triangle];
+    const auto [low, high] = std::minmax({at_[t[0]][axis], at_[t[1]][axis], at_[t[2]][axis]});
+    const double last = static_cast<double>(size - 1);
+    if (!(high >= 0) || !(low <= last)) return {};
+    return {static_cast<std::int64_t>(std::ceil(std::max(low, 0.0))),
+            static_cast<std::int64_t>(std::floor(std::min(high, last)))};
+  }
+
+  const TriangleMesh& mesh_;
+  std::int64_t rows_;
+  std::vector<Vec3> at_;                              // vertices, in voxels
+  std::vector<std::vector<std::uint32_t>> of_plane_;  // triangles by plane
+};
 
 }  // namespace
 
@@ -237,26 +273,16 @@ RunMask mesh_mask(const ZoneSpec& zone, const VolumeGeometry& g, const RunContro
   const std::string place = "zones: " + zone.id;
   const TriangleMesh mesh = read_stl(zone.file);
   check_closed(mesh, place);
-  double low[2] = {1e300, 1e300}, high[2] = {-1e300, -1e300};
-  for (const auto& v : mesh.vertices_mm) {
-    const Vec3 index = g.mm_to_index({v[0], v[1], v[2]});
-    for (std::size_t a = 0; a < 2; ++a) {
-      low[a] = std::min(low[a], index[a + 1]);
-      high[a] = std::max(high[a], index[a + 1]);
-    }
-  }
+  const MeshRows rows(mesh, g);
   RunMask out(g.size);
+  std::vector<std::vector<double>> crossings;
   for (std::int64_t z = 0; z < g.size[2]; ++z) {
     control.throw_if_cancelled();
-    for (std::int64_t y = 0; y < g.size[1]; ++y) {
-      const bool reached = static_cast<double>(y) >= low[0] && static_cast<double>(y) <= high[0] &&
-                           static_cast<double>(z) >= low[1] && static_cast<double>(z) <= high[1];
-      if (reached) {
-        const auto at = crossings(mesh, g, y, z);
-        Runs runs;
-        for (std::size_t i = 0; i + 1 < at.size(); i += 2) add_clipped({at[i], at[i + 1]}, g.size[0], runs);
-        for (const Run& run : united(runs, {})) out.add_run(run);
-      }
+    rows.plane(z, crossings);
+    for (const std::vector<double>& at : crossings) {
+      Runs runs;
+      for (std::size_t i = 0; i + 1 < at.size(); i += 2) add_clipped({at[i], at[i + 1]}, g.size[0], runs);
+      for (const Run& run : united(runs, {})) out.add_run(run);
       out.end_row();
     }
   }

@@ -33,6 +33,9 @@ void ClassFigures::add(const ClassFigures& other) {
   volume += other.volume;
   diameter_square += other.diameter_square;
   centre_square += other.centre_square;
+  volume_within += other.volume_within;
+  volume_pull += other.volume_pull;
+  diameter_u += other.diameter_u;
 }
 
 double ClassFigures::diameter_rms() const { return found == 0 ? 0 : std::sqrt(diameter_square / found); }
@@ -64,6 +67,11 @@ Comparison compare(const std::vector<phantoms::Ball>& balls, const std::vector<P
     figures.volume += pores[best].volume_mm3.value / truth - 1;
     figures.diameter_square += std::pow(pores[best].equivalent_diameter_mm - ball->diameter_mm, 2);
     figures.centre_square += least * least;
+    const double pull =
+        std::abs(pores[best].volume_mm3.value - truth) / pores[best].volume_mm3.standard_uncertainty;
+    figures.volume_within += pull <= 2;
+    figures.volume_pull += pull;
+    figures.diameter_u += pores[best].diameter_standard_uncertainty_mm;
   }
   for (std::size_t i = 0; i < pores.size(); ++i) {
     if (taken[i]) continue;

@@ -115,12 +115,14 @@ void print(const Result& r) {
       r.searched_voxels / reference_volume, r.iso50.false_pores);
   std::printf(
       "| diameter, voxels | found | mean volume error | diameter RMS, voxels | centre RMS, voxels | "
-      "`iso50` found | `iso50` volume error |\n|---|---|---|---|---|---|---|\n");
+      "within U (k = 2) | mean error / u | `iso50` found | `iso50` volume error |\n"
+      "|---|---|---|---|---|---|---|---|---|\n");
   for (const auto& [diameter, figures] : r.local.classes) {
     const ClassFigures& plain = r.iso50.classes.at(diameter);
-    std::printf("| %g | %d of %d | %+.1f %% | %.3f | %.3f | %d | %+.1f %% |\n", diameter, figures.found,
-                figures.total, figures.volume_error_percent(), figures.diameter_rms(), figures.centre_rms(),
-                plain.found, plain.volume_error_percent());
+    std::printf("| %g | %d of %d | %+.1f %% | %.3f | %.3f | %.0f %% | %.2f | %d | %+.1f %% |\n", diameter,
+                figures.found, figures.total, figures.volume_error_percent(), figures.diameter_rms(),
+                figures.centre_rms(), figures.within_percent(), figures.mean_pull(), plain.found,
+                plain.volume_error_percent());
   }
   for (const Pore& pore : r.local.false_list)
     std::printf("\nFalse: %.2f voxels across at %.1f %.1f %.1f, peak %.3f\n", pore.equivalent_diameter_mm,
