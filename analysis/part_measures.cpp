@@ -1,4 +1,5 @@
 // The part itself in a zone: walls, material volume, surface.
+#include <algorithm>
 #include <cmath>
 #include <numbers>
 
@@ -9,15 +10,35 @@ namespace halfmark {
 
 namespace {
 
+// Noise roughens a triangulated surface: a first estimate.
+constexpr double triangulation_roughness = 0.02;
+
 std::vector<std::uint8_t> vertices_in_zone(const RequirementContext& c, const TriangleMesh& mesh) {
   std::vector<std::uint8_t> in_zone;
-  if (c.zones.spec(c.zone).shape == ZoneShape::everything) return in_zone;
+  if (c.whole_part()) return in_zone;
   in_zone.reserve(mesh.vertices_mm.size());
   for (const auto& v : mesh.vertices_mm) {
     const Vec3 mm{v[0], v[1], v[2]};
     in_zone.push_back(c.zones.contains(c.zone, mm) && !c.zones.left_out(mm));
   }
   return in_zone;
+}
+
+// Triangles count by their middles.
+double area_in_zone(const RequirementContext& c, const TriangleMesh& mesh) {
+  if (c.whole_part()) return surface_area_mm2(mesh);
+  double area = 0;
+  for (const auto& t : mesh.triangles) {
+    Vec3 p[3];
+    for (std::size_t i = 0; i < 3; ++i) {
+      const auto& v = mesh.vertices_mm[t[i]];
+      p[i] = {v[0], v[1], v[2]};
+    }
+    const Vec3 middle = (1.0 / 3) * (p[0] + p[1] + p[2]);
+    if (c.zones.contains(c.zone, middle) && !c.zones.left_out(middle))
+      area += 0.5 * length(cross(p[1] - p[0], p[2] - p[0]));
+  }
+  return area;
 }
 
 double shift_mm(const RequirementContext& c) {
@@ -46,10 +67,8 @@ void measure_wall(RequirementContext& c) {
     c.set(summary.least_mm.value, {{"wall", summary.least_mm.standard_uncertainty}});
     c.result.evidence.what = "thinnest wall";
   }
-  if (!summary.spots.empty()) {
-    c.result.evidence.position_mm = summary.spots.front().position_mm;
-    c.result.evidence.extent_mm = summary.spots.front().patch_mean_mm;
-  }
+  c.result.evidence.position_mm = summary.least_position_mm;
+  c.result.evidence.extent_mm = summary.least_mm.value;
   if (c.result.measured.value >= c.spec.walls.max_mm) {
     c.result.lower_bound = true;
     c.result.warnings.push_back(number_text(
@@ -58,33 +77,31 @@ void measure_wall(RequirementContext& c) {
 }
 
 void measure_material_volume(RequirementContext& c) {
-  const bool all = c.zones.spec(c.zone).shape == ZoneShape::everything && c.measured.surface != nullptr;
   const ZoneSums sums = c.zone_sums();
-  if (sums.part_voxels == 0) return c.none("the zone holds no part", false);
-  const double voxel = c.measured.geometry.voxel_volume_mm3();
-  double value = (static_cast<double>(sums.part_voxels) - c.total(sums, false).voxels) * voxel;
-  if (all) value = enclosed_volume_mm3(*c.measured.surface);
-  const double area = c.measured.surface != nullptr ? surface_area_mm2(*c.measured.surface) : 0;
-  c.set(value, {{"threshold", area * shift_mm(c)},
-                {"voxel count", all ? 0 : std::sqrt(area / (c.voxel_mm() * c.voxel_mm()) / 12) * voxel}});
+  const double voxel = c.measured.geometry.voxel_volume_mm3(), face = c.voxel_mm() * c.voxel_mm();
+  // Every void takes material away, also those that do not count as pores.
+  double voids = 0;
+  for (const Pore& p : c.measured.pores.pores) {
+    if (is_void(p)) voids += static_cast<double>(sums.pore[static_cast<std::size_t>(p.id)]) / PoreField::unit;
+  }
+  double value = (static_cast<double>(sums.part_voxels) - voids) * voxel, count = 0;
+  const double area = c.measured.surface != nullptr ? area_in_zone(c, *c.measured.surface) : 0;
+  if (c.whole_part() && c.measured.surface != nullptr) {
+    value = enclosed_volume_mm3(*c.measured.surface);
+  } else {
+    // Each voxel that the part's surface or the zone's (taken as a cube's of the same volume) cuts is counted
+    // or not: an error of 1 / sqrt(12) voxel apiece.
+    const double cut = 6 * std::pow(std::max(value, 0.0), 2.0 / 3);
+    count = std::sqrt((area + cut) / face / 12) * voxel;
+  }
+  c.set(value, {{"threshold", area * shift_mm(c)}, {"voxel count", count}});
   c.result.evidence.what = "material volume";
 }
 
 void measure_surface_area(RequirementContext& c) {
   if (c.measured.surface == nullptr) return c.none("the surface was not extracted", false);
-  double area = 0;
-  const bool all = c.zones.spec(c.zone).shape == ZoneShape::everything;
-  for (const auto& t : c.measured.surface->triangles) {
-    Vec3 p[3];
-    for (std::size_t i = 0; i < 3; ++i)
-      p[i] = {c.measured.surface->vertices_mm[t[i]][0], c.measured.surface->vertices_mm[t[i]][1],
-              c.measured.surface->vertices_mm[t[i]][2]};
-    const Vec3 middle = (1.0 / 3) * (p[0] + p[1] + p[2]);
-    if (!all && (!c.zones.contains(c.zone, middle) || c.zones.left_out(middle))) continue;
-    area += 0.5 * length(cross(p[1] - p[0], p[2] - p[0]));
-  }
-  // Noise roughens a triangulated surface: a first estimate of two percent.
-  c.set(area, {{"roughness of the triangulation", 0.02 * area}});
+  const double area = area_in_zone(c, *c.measured.surface);
+  c.set(area, {{"roughness of the triangulation", triangulation_roughness * area}});
   c.result.evidence.what = "surface area";
 }
 

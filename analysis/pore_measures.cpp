@@ -8,16 +8,14 @@ namespace halfmark {
 
 namespace {
 
-// Pores within their own uncertainty of the size limit may or may not count.
+// Pores within their own uncertainty of the size limit may or may not count: the expanded uncertainty (k = 2)
+// is their number.
 double count_uncertainty(const RequirementContext& c) {
-  const Requirement& r = c.requirement;
-  if (!r.ignore_below_mm) return 0;
+  const bool inclusions = c.requirement.quantity == Quantity::inclusion_count;
   double near = 0;
-  for (const Pore& p : c.measured.pores.pores) {
-    if (p.left_out || !is_void(p) || std::find(p.zones.begin(), p.zones.end(), r.zone) == p.zones.end())
-      continue;
-    near += std::abs(p.equivalent_diameter_mm - *r.ignore_below_mm) < 2 * p.diameter_standard_uncertainty_mm;
-  }
+  for (const Pore& p : c.measured.pores.pores)
+    near += c.near_size_limit[static_cast<std::size_t>(p.id)] != 0 && counts_to_sizes(p, inclusions) &&
+            c.in_zone(p);
   return 0.5 * near;
 }
 
@@ -45,7 +43,6 @@ void measure_count(RequirementContext& c) { count(c, 1); }
 
 void measure_density(RequirementContext& c) {
   const ZoneSums sums = c.zone_sums();
-  if (sums.part_voxels == 0) return c.none("the zone holds no part", false);
   count(c, static_cast<double>(sums.part_voxels) * c.measured.geometry.voxel_volume_mm3() / 1000);
 }
 

@@ -12,11 +12,13 @@ namespace halfmark {
 
 namespace {
 
-RunGrid neighbour_grid(const SegmentedPores& found, const VolumeGeometry& geometry) {
+// counts(pore) -> whether its label goes into the grid.
+template <class F>
+RunGrid neighbour_grid(const SegmentedPores& found, const VolumeGeometry& geometry, F counts) {
   return RunGrid(geometry.size, geometry.spacing_mm, [&](std::int64_t z, std::vector<LabelledRun>& out) {
     for (std::int64_t y = 0; y < geometry.size[1]; ++y) {
       for (const LabelRun& r : found.field.labels.row(y, z)) {
-        if (!counts_as_neighbour(found.pores[static_cast<std::size_t>(r.label) - 1].kind)) continue;
+        if (!counts(found.pores[static_cast<std::size_t>(r.label) - 1])) continue;
         out.push_back(
             {{r.begin, r.end, static_cast<std::int32_t>(y), static_cast<std::int32_t>(z)}, r.label});
       }
@@ -80,7 +82,8 @@ bool counts_as_neighbour(PoreKind kind) { return kind != PoreKind::inclusion && 
 void measure_spacing(SegmentedPores& found, const VolumeGeometry& geometry,
                      const std::vector<double>& surface_shift_mm, const RunControl& control) {
   const PoreRuns runs(found.field.labels, static_cast<std::int32_t>(found.pores.size()));
-  const RunGrid grid = neighbour_grid(found, geometry);
+  const RunGrid grid =
+      neighbour_grid(found, geometry, [](const Pore& pore) { return counts_as_neighbour(pore.kind); });
   for_each_pore(found.pores, control, [&](Pore& pore) {
     pore.spacing_mm = not_measured;
     pore.nearest_id = 0;
@@ -110,18 +113,22 @@ void measure_depth(SegmentedPores& found, const VolumeGeometry& geometry, const 
 std::vector<PoreGap> gaps_between_pores(const SegmentedPores& found, const VolumeGeometry& geometry,
                                         const std::vector<double>& reach_mm, const RunControl& control) {
   const PoreRuns runs(found.field.labels, static_cast<std::int32_t>(found.pores.size()));
-  const RunGrid grid = neighbour_grid(found, geometry);
+  const auto counts = [&](const Pore& pore) {
+    return counts_as_neighbour(pore.kind) && reach_mm[index_of(pore.id)] >= 0;
+  };
+  const RunGrid grid = neighbour_grid(found, geometry, counts);
   std::vector<double> shift(found.pores.size());
   double widest = 0;
   for (const Pore& pore : found.pores) {
     const double label_mm3 = static_cast<double>(pore.voxels) * geometry.voxel_volume_mm3();
     shift[index_of(pore.id)] = surface_shift_of(pore, label_mm3);
+    if (!counts(pore)) continue;
     widest = std::min(widest, shift[index_of(pore.id)]);
   }
   std::vector<std::vector<PoreGap>> parts(found.pores.size());
   tbb::parallel_for(std::size_t{0}, found.pores.size(), [&](std::size_t i) {
     const Pore& pore = found.pores[i];
-    if (control.cancelled() || !counts_as_neighbour(pore.kind) || runs.of(pore.id).empty()) return;
+    if (control.cancelled() || !counts(pore) || runs.of(pore.id).empty()) return;
     // Shifts below zero bring surfaces nearer than the labels' gap tells.
     const double reach = reach_mm[i] - std::min(0.0, shift[i]) - widest;
     for (const RunGrid::Nearest& n : grid.within(runs.of(pore.id), pore.id, reach)) {

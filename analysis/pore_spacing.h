@@ -31,7 +31,7 @@ void measure_depth(SegmentedPores& found, const VolumeGeometry& geometry, const 
                    const std::vector<double>& surface_shift_mm, const RunControl& control = {});
 
 // All pairs of neighbours, ordered by id, whose gap is at most the smaller of their reaches. reach_mm: by
-// pore (id - 1). Pores must have been described.
+// pore (id - 1); below zero: the pore is left out. Pores must have been described.
 std::vector<PoreGap> gaps_between_pores(const SegmentedPores& found, const VolumeGeometry& geometry,
                                         const std::vector<double>& reach_mm, const RunControl& control = {});
 

@@ -9,24 +9,26 @@ namespace halfmark {
 
 namespace {
 
+// The body moves by an eighth of its size at most: a pore may lie this share of its porosity better within.
+constexpr double step_share = 0.02;
+
 void moving(RequirementContext& c, const std::optional<WorstPlace>& worst, const std::string& nothing,
             const std::string& what) {
   if (!worst) return c.none(nothing, false);
-  // The same relative uncertainty as all of the zone's porosity, and the step of the moving body.
-  const auto t = c.total(c.zone_sums(), false);
-  double u = 0;
-  for (const Contribution& p : t.contributions) u += p.standard_uncertainty * p.standard_uncertainty;
-  const double relative = t.voxels > 0 ? std::sqrt(u) / t.voxels : 0;
-  c.set(worst->percent,
-        {{"pore volumes", worst->percent * relative}, {"steps of the moving body", 0.02 * worst->percent}});
-  c.result.evidence = {0, c.measured.geometry.index_to_mm(worst->index), worst->extent_mm, what};
+  const MeasuredPart& m = c.measured;
+  const ZoneSums sums = sum_place(m.pores.field, m.pores.pores.size(), m.part, c.zones, c.zone, *worst);
+  const double scale = 100 / static_cast<double>(std::max<std::int64_t>(sums.part_voxels, 1));
+  auto contributions = c.total(sums, false).contributions;
+  for (Contribution& p : contributions) p.standard_uncertainty *= scale;
+  contributions.push_back({"steps of the moving body", step_share * worst->percent});
+  c.set(worst->percent, contributions);
+  c.result.evidence = {0, m.geometry.index_to_mm(worst->index), worst->extent_mm, what};
 }
 
 }  // namespace
 
 void measure_porosity(RequirementContext& c, bool only_open) {
   const ZoneSums sums = c.zone_sums();
-  if (sums.part_voxels == 0) return c.none("the zone holds no part", false);
   auto t = c.total(sums, only_open);
   const double scale = 100 / static_cast<double>(sums.part_voxels);
   for (Contribution& p : t.contributions) p.standard_uncertainty *= scale;
@@ -67,7 +69,7 @@ void measure_local_porosity(RequirementContext& c) {
 PoreSummary summarise_pores(const MeasuredPart& m, const ZoneSet& zones) {
   (void)zones;
   PoreSummary out;
-  double variance = 0, open = 0;
+  double own = 0, open = 0, threshold = 0, edge = 0;
   for (const Pore& p : m.pores.pores) {
     if (p.left_out || !p.disposition.empty()) continue;
     out.inclusions += p.kind == PoreKind::inclusion;
@@ -79,18 +81,18 @@ PoreSummary summarise_pores(const MeasuredPart& m, const ZoneSet& zones) {
     out.cut_by_field += p.cut_by_field;
     out.diffuse += p.kind == PoreKind::diffuse;
     out.volume_mm3.value += p.volume_mm3.value;
-    variance += p.volume_mm3.standard_uncertainty * p.volume_mm3.standard_uncertainty;
     if (p.open) open += p.volume_mm3.value;
-  }
-  // Threshold and window errors are common to all pores; noise and level are each pore's own.
-  double common = 0;
-  for (const Pore& p : m.pores.pores) {
-    if (p.left_out || !p.disposition.empty() || !is_void(p)) continue;
+    // Noise and local level are each pore's own; threshold and edge position err alike in all pores.
     for (const Contribution& c : p.volume_mm3.contributions) {
-      if (c.name == "threshold" || c.name == "window") common += c.standard_uncertainty;
+      const double u = c.standard_uncertainty;
+      if (c.name == "noise" || c.name == "local level") {
+        own += u * u;
+      } else {
+        (c.name == "threshold" ? threshold : edge) += u;
+      }
     }
   }
-  out.volume_mm3.standard_uncertainty = std::sqrt(variance + common * common);
+  out.volume_mm3.standard_uncertainty = std::sqrt(own + threshold * threshold + edge * edge);
   const double part_mm3 = static_cast<double>(m.part.inside.voxel_count()) * m.geometry.voxel_volume_mm3();
   out.porosity_percent.value = 100 * out.volume_mm3.value / part_mm3;
   out.porosity_percent.standard_uncertainty = 100 * out.volume_mm3.standard_uncertainty / part_mm3;

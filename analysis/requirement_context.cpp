@@ -16,6 +16,10 @@ bool is_void(const Pore& pore) {
   return pore.kind != PoreKind::inclusion && pore.kind != PoreKind::in_between;
 }
 
+bool counts_to_sizes(const Pore& pore, bool inclusions) {
+  return inclusions ? pore.kind == PoreKind::inclusion : is_void(pore) && pore.kind != PoreKind::diffuse;
+}
+
 RequirementContext::RequirementContext(const Requirement& r, const InspectionSpec& s, const ZoneSet& z,
                                        const MeasuredPart& m, const RunControl& run)
     : requirement(r), spec(s), zones(z), measured(m), control(run), zone(z.index_of(r.zone)) {
@@ -24,17 +28,32 @@ RequirementContext::RequirementContext(const Requirement& r, const InspectionSpe
   const bool inclusions =
       r.quantity == Quantity::inclusion_diameter || r.quantity == Quantity::inclusion_count;
   counts.assign(m.pores.pores.size() + 1, 0);
+  near_size_limit = counts;
   for (const Pore& p : m.pores.pores) {
     if (p.left_out || !p.disposition.empty()) continue;
+    if (r.ignore_below_mm)
+      near_size_limit[static_cast<std::size_t>(p.id)] =
+          std::abs(p.equivalent_diameter_mm - *r.ignore_below_mm) < 2 * p.diameter_standard_uncertainty_mm;
     if (r.ignore_below_mm && p.equivalent_diameter_mm < *r.ignore_below_mm) continue;
     if (is_void(p) && !inclusions) counts[static_cast<std::size_t>(p.id)] = 1;
-    const bool fits = inclusions ? p.kind == PoreKind::inclusion : is_void(p) && p.kind != PoreKind::diffuse;
-    if (fits && std::find(p.zones.begin(), p.zones.end(), r.zone) != p.zones.end()) pores.push_back(&p);
+    if (counts_to_sizes(p, inclusions) && in_zone(p)) pores.push_back(&p);
   }
 }
 
 bool RequirementContext::any_cut() const {
   return std::any_of(pores.begin(), pores.end(), [](const Pore* p) { return p->cut_by_field; });
+}
+
+bool RequirementContext::in_zone(const Pore& pore) const {
+  return std::find(pore.zones.begin(), pore.zones.end(), requirement.zone) != pore.zones.end();
+}
+
+bool RequirementContext::whole_part() const {
+  if (zones.spec(zone).shape != ZoneShape::everything) return false;
+  for (std::size_t i = 0; i < zones.count(); ++i) {
+    if (zones.spec(i).use != ZoneUse::inspect) return false;
+  }
+  return true;
 }
 
 void RequirementContext::set(double value, std::vector<Contribution> contributions) {
@@ -62,12 +81,15 @@ ZoneSums RequirementContext::zone_sums() const {
 
 RequirementContext::Total RequirementContext::total(const ZoneSums& sums, bool only_open) const {
   Total out;
-  double noise = 0, level = 0, threshold = 0, window = 0, most = 0;
+  double noise = 0, level = 0, threshold = 0, edge = 0, near = 0, most = 0;
   const double voxel = measured.geometry.voxel_volume_mm3();
   for (const Pore& p : measured.pores.pores) {
-    if (counts[static_cast<std::size_t>(p.id)] == 0 || (only_open && !p.open)) continue;
-    const double share = static_cast<double>(sums.pore[static_cast<std::size_t>(p.id)]) / PoreField::unit;
-    if (share == 0) continue;
+    const auto id = static_cast<std::size_t>(p.id);
+    const double share = static_cast<double>(sums.pore[id]) / PoreField::unit;
+    if (share == 0 || !is_void(p) || (only_open && !p.open)) continue;
+    // Half of it: the expanded uncertainty takes in the pore as counted and as not counted.
+    if (near_size_limit[id] != 0) near += 0.5 * share;
+    if (counts[id] == 0) continue;
     out.voxels += share;
     if (share > most) {
       most = share;
@@ -83,14 +105,15 @@ RequirementContext::Total RequirementContext::total(const ZoneSums& sums, bool o
       } else if (c.name == "threshold") {
         threshold += u;
       } else {
-        window += u;
+        edge += u;
       }
     }
   }
   out.contributions = {{"noise", std::sqrt(noise)},
                        {"local level", std::sqrt(level)},
                        {"threshold", threshold},
-                       {"window and digitisation", window}};
+                       {"edge position", edge}};
+  if (requirement.ignore_below_mm) out.contributions.push_back({"pores near the size limit", near});
   return out;
 }
 

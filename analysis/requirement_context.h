@@ -24,6 +24,8 @@ std::string number_text(const char* format, double a, double b = 0);
 
 // Neither inclusion nor in-between grey.
 bool is_void(const Pore& pore);
+// Of the kinds that sizes, numbers and gaps of pores, or of inclusions, are taken of.
+bool counts_to_sizes(const Pore& pore, bool inclusions);
 
 class RequirementContext {
  public:
@@ -39,17 +41,23 @@ class RequirementContext {
 
   std::vector<const Pore*> pores;    // that count, with a centre in the zone; largest first
   std::vector<std::uint8_t> counts;  // per id: counts to porosities (anywhere)
+  // Per id: would count or not count if its diameter were wrong by its expanded uncertainty (k = 2).
+  std::vector<std::uint8_t> near_size_limit;
   RequirementResult result;
 
   double voxel_mm() const { return measured.geometry.voxel_mm(); }
   bool any_cut() const;
+  bool in_zone(const Pore& pore) const;
+  // The zone takes in the whole part: nothing is left out of it.
+  bool whole_part() const;
 
   void set(double value, std::vector<Contribution> contributions);
   void point_at(const Pore& pore, const std::string& what);
   void none(const std::string& reason, bool met);
 
   ZoneSums zone_sums() const;
-  // Summed pore share with its uncertainty, in voxels; noise adds in squares, level and threshold in full.
+  // Summed pore share with its uncertainty, in voxels. Noise and local level are each pore's own and add in
+  // squares; threshold and edge position err alike in all pores and add in full.
   struct Total {
     double voxels = 0;
     std::vector<Contribution> contributions;

@@ -99,7 +99,11 @@ RequirementResult measure_requirement(const Requirement& requirement, const Insp
                                       const RunControl& control) {
   control.throw_if_cancelled();
   RequirementContext c(requirement, spec, zones, measured, control);
-  measure(c);
+  if (c.whole_part() || c.zone_sums().part_voxels > 0) {
+    measure(c);
+  } else {
+    c.none("the zone holds no part: check its place, and what is excluded from it", false);
+  }
   warn(c);
   return c.result;
 }

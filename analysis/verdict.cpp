@@ -95,7 +95,9 @@ void judge(RequirementResult& r, const DecisionSpec& decision) {
     r.reason = subject + " breaks the " + side + " of " + with_unit(limit, r.unit);
   } else if (unproved) {
     r.reason = subject + " keeps the " + side + " of " + with_unit(limit, r.unit) +
-               ", but a pore is cut by the field of view and may be larger";
+               (r.requirement.quantity == Quantity::wall_thickness
+                    ? ", but walls are measured up to wall_thickness.max_mm only and may be thicker"
+                    : ", but a pore is cut by the field of view and may be larger");
   } else if (met) {
     r.reason = subject + " keeps the " + side + " of " + with_unit(limit, r.unit);
   } else {

@@ -59,6 +59,25 @@ ZoneSums sum_zone(const PoreField& field, std::size_t pore_count, const PartMap&
   return out;
 }
 
+ZoneSums sum_zone_where(const PoreField& field, std::size_t pore_count, const PartMap& part,
+                        const ZoneSet& zones, std::size_t zone,
+                        const std::function<bool(std::int64_t, std::int64_t, std::int64_t)>& holds) {
+  ZoneSums out;
+  out.pore.assign(pore_count + 1, 0);
+  for_zone(
+      field, part, zones, zone,
+      [&](std::int64_t y, std::int64_t z, std::int32_t b, std::int32_t e, std::int32_t label,
+          std::size_t at) {
+        for (std::int32_t x = b; x < e; ++x, ++at) {
+          if (holds(x, y, z)) out.pore[static_cast<std::size_t>(label)] += field.fraction[at];
+        }
+      },
+      [&](std::int64_t y, std::int64_t z, std::int32_t b, std::int32_t e) {
+        for (std::int32_t x = b; x < e; ++x) out.part_voxels += holds(x, y, z);
+      });
+  return out;
+}
+
 CellSums sum_cells(const PoreField& field, const std::vector<std::uint8_t>& counts, const PartMap& part,
                    const ZoneSet& zones, std::size_t zone, const std::array<std::int64_t, 3>& cell) {
   CellSums out;

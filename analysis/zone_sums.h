@@ -4,6 +4,7 @@
 
 #include <array>
 #include <cstdint>
+#include <functional>
 #include <vector>
 
 #include "analysis/part_map.h"
@@ -19,6 +20,11 @@ struct ZoneSums {
 
 ZoneSums sum_zone(const PoreField& field, std::size_t pore_count, const PartMap& part, const ZoneSet& zones,
                   std::size_t zone);
+
+// The same over the voxels for which holds(x, y, z).
+ZoneSums sum_zone_where(const PoreField& field, std::size_t pore_count, const PartMap& part,
+                        const ZoneSet& zones, std::size_t zone,
+                        const std::function<bool(std::int64_t, std::int64_t, std::int64_t)>& holds);
 
 // A grid of cells over the volume; sums of one zone.
 struct CellSums {
