@@ -13,6 +13,7 @@
 #include "analysis/peak_tree.h"
 #include "analysis/pore_candidates.h"
 #include "analysis/pore_iso50.h"
+#include "analysis/pore_uncertainty.h"
 #include "analysis/pore_windows.h"
 
 namespace halfmark {
@@ -31,14 +32,14 @@ constexpr double core_widths = 3.0;
 constexpr std::int64_t least_core_voxels = 30;
 // Plateaus between these shares of the contrast are neither air nor material: powder, core sand.
 constexpr double in_between_low = 0.2, in_between_high = 0.8;
+// A plateau is flat: its voxels scatter by little more than the noise (times the factor, for the noise of air
+// and material differ) and a filling's own texture, a share of the contrast; its peak rises above it no more
+// than that. What scatters more is a cluster of voids and counts as such.
+constexpr double plateau_noise_factor = 1.5, plateau_texture = 0.08, plateau_peak = 0.15;
+// It differs from air and from material by so many standard errors of its mean.
+constexpr double plateau_standard_errors = 5;
 // So many core voxels make the voids' own grey level better than the air's.
 constexpr std::int64_t enough_void_voxels = 200;
-// What window and correction leave, from balls of known volume (share of the volume).
-constexpr double window_residual = 0.005;
-
-double edge_width(const GreyLevels& levels) {
-  return std::sqrt(levels.blur_voxel * levels.blur_voxel + 1.0 / 12);
-}
 
 enum class Search { dark, bright, diffuse };
 constexpr std::int32_t searches = 3;
@@ -121,7 +122,7 @@ Found find_signed(const VolumeSource& source, const GreyDeficit& deficit, const 
   labels_from(grow_pores(found.candidates, control), options.min_voxels, found);
   control.step("pores", 0.6);
   const VolumeGeometry& geometry = source.geometry();
-  const double width = edge_width(levels);
+  const double width = edge_width_voxel(levels);
   const RunMask core = erode(mask_of(found.labels), core_widths * width * geometry.voxel_mm(),
                              geometry.spacing_mm, true, control);
   const WindowSizes sizes{window_widths * width, ring_voxels};
@@ -220,11 +221,12 @@ VolumeOfPore volume_of(const PoreSums& s, const GreyLevels& levels, const Materi
   VolumeOfPore out;
   out.correction = correction;
   out.voxels = std::max(static_cast<double>(s.window) / unit - n * correction, 0.0);
-  out.contributions = {{"noise", std::sqrt(n * noise2)},
-                       {"local level", n * level_error},
-                       {"threshold", out.voxels * std::numbers::sqrt2 *
-                                         levels.threshold_standard_uncertainty / levels.contrast()},
-                       {"window", window_residual * out.voxels}};
+  out.contributions = {
+      {"noise", std::sqrt(n * noise2)},
+      {"local level", n * level_error},
+      {"threshold",
+       out.voxels * std::numbers::sqrt2 * levels.threshold_standard_uncertainty / levels.contrast()},
+      {"edge position", edge_error_widths * edge_width_voxel(levels) * sphere_area(out.voxels)}};
   return out;
 }
 
@@ -267,6 +269,26 @@ Pore pore_from(const PoreSums& s, const VolumeOfPore& volume, double share, cons
   return pore;
 }
 
+double plateau_of(const PoreSums& s) {
+  if (s.core_voxels < least_core_voxels) return 0;
+  return static_cast<double>(s.core) / PoreField::unit / static_cast<double>(s.core_voxels);
+}
+
+// A grey plateau between air and material that blur cannot explain: trapped powder, core sand. The core lies
+// three edge widths inside the label, where blur leaves less than 0.3 % of the edge.
+bool is_in_between(const PoreSums& s, double peak, const GreyLevels& levels, double smoothed_noise) {
+  const double plateau = plateau_of(s);
+  if (plateau <= in_between_low || plateau >= in_between_high) return false;
+  const double n = static_cast<double>(s.core_voxels), unit = PoreField::unit;
+  const double variance =
+      std::max(static_cast<double>(s.core_square) / (unit * unit) / n - plateau * plateau, 0.0);
+  const double noise = plateau_noise_factor / levels.contrast_to_noise;
+  if (variance > noise * noise + plateau_texture * plateau_texture) return false;
+  const double gap = std::min(plateau, 1 - plateau);
+  return gap > plateau_standard_errors * std::sqrt(variance / n) &&
+         peak < plateau + plateau_peak + 4 * smoothed_noise;
+}
+
 PoreKind kind_of(Search search, bool in_between, const Pore& pore) {
   if (search == Search::bright) return PoreKind::inclusion;
   if (search == Search::diffuse) return PoreKind::diffuse;
@@ -285,12 +307,10 @@ void add_pores(const Found& found, const std::vector<std::uint8_t>& swallowed, c
     const auto i = static_cast<std::size_t>(l);
     if (i < swallowed.size() && swallowed[i] != 0) continue;
     const PoreSums& s = found.windows.sums[i];
-    const double plateau =
-        s.core_voxels >= least_core_voxels
-            ? static_cast<double>(s.core) / PoreField::unit / static_cast<double>(s.core_voxels)
-            : 0;
+    const double plateau = plateau_of(s);
     const bool in_between =
-        found.search == Search::dark && plateau > in_between_low && plateau < in_between_high;
+        found.search == Search::dark &&
+        is_in_between(s, static_cast<double>(found.peak[i]), levels, found.candidates.smoothed_noise);
     // Inclusions and trapped powder are sized by half of their own plateau or peak: the sum relative to it.
     double full = share;
     if (in_between) full = plateau;

@@ -11,6 +11,7 @@
 #include "analysis/crofton_area.h"
 #include "analysis/pore_outline.h"
 #include "analysis/pore_spacing.h"
+#include "analysis/pore_uncertainty.h"
 #include "analysis/shape_class.h"
 
 namespace halfmark {
@@ -110,6 +111,7 @@ class Description {
     pore.width_mm = calipers.width;
     pore.thickness_mm = calipers.thickness;
     set_area(pore, label, label_mm3 * ratio, raw, calipers);
+    widen_edge_term(pore);
     return -growth / 2;
   }
 
@@ -126,6 +128,18 @@ class Description {
     pore.sphericity = std::min(1.0, wadell_sphericity(volume_mm3, pore.surface_area_mm2));
     pore.shape =
         shape_class(calipers, pore.sphericity, std::cbrt(6 * volume_mm3 / std::numbers::pi), blur_mm_);
+  }
+
+  // The edge's share of the volume's uncertainty is first stated for a sphere; other shapes have more
+  // surface.
+  static void widen_edge_term(Pore& pore) {
+    const double sphere = sphere_area(pore.volume_mm3.value);
+    if (std::isnan(pore.surface_area_mm2) || !(pore.surface_area_mm2 > sphere)) return;
+    for (const Contribution& c : pore.volume_mm3.contributions) {
+      if (c.name != "edge position") continue;
+      return set_volume_term(pore, std::string(c.name),
+                             c.standard_uncertainty * pore.surface_area_mm2 / sphere);
+    }
   }
 
   Vec3 spacing_;

@@ -21,6 +21,7 @@ void PoreSums::add(const PoreSums& o) {
   weight += o.weight;
   core_voxels += o.core_voxels;
   core += o.core;
+  core_square += o.core_square;
   grey += o.grey;
 }
 
@@ -223,8 +224,10 @@ void sum_block(const GreyPlanes& planes, const std::array<std::int64_t, 3>& size
           const auto at = static_cast<std::size_t>(row + x);
           if (w.nearest[at] == 0 || w.block.usable[at] == 0) continue;
           PoreSums& sums = w.sums[static_cast<std::size_t>(slot_of[static_cast<std::size_t>(w.nearest[at])])];
+          const std::int64_t share = to_fraction(sign > 0 ? w.block.deficit[at] : -w.block.deficit[at]);
           ++sums.core_voxels;
-          sums.core += to_fraction(sign > 0 ? w.block.deficit[at] : -w.block.deficit[at]);
+          sums.core += share;
+          sums.core_square += share * share;
         }
       }
       out.row_runs.push_back(static_cast<std::uint32_t>(out.runs.size() - before));

@@ -21,6 +21,7 @@ struct PoreSums {
   std::array<std::int64_t, 3> moment{};    // summed fraction * index over the label voxels
   std::int64_t weight = 0;                 // its weight
   std::int64_t core_voxels = 0, core = 0;  // voxels deep inside the label
+  std::int64_t core_square = 0;            // their summed squared fraction
   double grey = 0;                         // summed grey value over the label voxels; integers are exact
   void add(const PoreSums& other);
 };

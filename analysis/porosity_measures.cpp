@@ -85,7 +85,7 @@ PoreSummary summarise_pores(const MeasuredPart& m, const ZoneSet& zones) {
     // Noise and local level are each pore's own; threshold and edge position err alike in all pores.
     for (const Contribution& c : p.volume_mm3.contributions) {
       const double u = c.standard_uncertainty;
-      if (c.name == "noise" || c.name == "local level") {
+      if (c.name == "noise" || c.name == "digitisation" || c.name == "local level") {
         own += u * u;
       } else {
         (c.name == "threshold" ? threshold : edge) += u;

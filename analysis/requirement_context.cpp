@@ -98,7 +98,7 @@ RequirementContext::Total RequirementContext::total(const ZoneSums& sums, bool o
     const double part = std::clamp(share * voxel / std::max(p.volume_mm3.value, 1e-300), 0.0, 1.0);
     for (const Contribution& c : p.volume_mm3.contributions) {
       const double u = part * c.standard_uncertainty / voxel;
-      if (c.name == "noise") {
+      if (c.name == "noise" || c.name == "digitisation") {
         noise += u * u;
       } else if (c.name == "local level") {
         level += u * u;  // largely each ring's own noise
