@@ -263,6 +263,7 @@ PartMap find_part(const VolumeSource& source, const FieldOfView& field, const Gr
                       "; check the levels in the spec (grey_levels) against `halfmark levels`");
   }
   PartMap part;
+  part.closing_radius_mm = options.closing_radius_mm;
   choose_body(part, components, measure_bodies(components, field), options, geometry);
 
   const RunMask outside =

@@ -30,8 +30,11 @@ constexpr double level_prior_share = 0.002;
 // A core of a label is this many edge widths inside it: there the grey value is the filling's own.
 constexpr double core_widths = 3.0;
 constexpr std::int64_t least_core_voxels = 30;
-// Plateaus between these shares of the contrast are neither air nor material: powder, core sand.
-constexpr double in_between_low = 0.2, in_between_high = 0.8;
+// Plateaus between these shares of the contrast are neither air nor material: powder, core sand. Loose powder
+// and sand fill a third to two thirds of their room (from memory); what is emptier counts as a void.
+constexpr double in_between_low = 0.2, in_between_high = 0.7;
+// Plateaus above this share are plain air: their mean is the voids' own grey level.
+constexpr double plain_air_share = 0.8;
 // A plateau is flat: its voxels scatter by little more than the noise (times the factor, for the noise of air
 // and material differ) and a filling's own texture, a share of the contrast; its peak rises above it no more
 // than that. What scatters more is a cluster of voids and counts as such.
@@ -234,7 +237,7 @@ double void_share(const std::vector<PoreSums>& sums) {
   std::int64_t voxels = 0, sum = 0;
   for (const PoreSums& s : sums) {
     if (s.core_voxels < least_core_voxels) continue;
-    if (static_cast<double>(s.core) < in_between_high * PoreField::unit * static_cast<double>(s.core_voxels))
+    if (static_cast<double>(s.core) < plain_air_share * PoreField::unit * static_cast<double>(s.core_voxels))
       continue;
     voxels += s.core_voxels;
     sum += s.core;

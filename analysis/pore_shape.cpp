@@ -9,6 +9,7 @@
 
 #include "analysis/calipers.h"
 #include "analysis/crofton_area.h"
+#include "analysis/pore_mouths.h"
 #include "analysis/pore_outline.h"
 #include "analysis/pore_spacing.h"
 #include "analysis/pore_uncertainty.h"
@@ -162,6 +163,13 @@ void describe_pores(SegmentedPores& found, const VolumeGeometry& geometry, const
     if (control.cancelled() || label.empty()) return;
     shift[i] = description.describe(found.pores[i], label, shares.of(i));
   });
+  const std::vector<PoreMouth> mouths = pore_mouths(found, geometry, part);
+  const double edge_mm = edge_width_voxel(levels) * geometry.voxel_mm();
+  for (std::size_t i = 0; i < mouths.size(); ++i) {
+    if (found.pores[i].open)
+      set_volume_term(found.pores[i], "mouth",
+                      mouth_uncertainty_mm3(mouths[i], part.closing_radius_mm, edge_mm));
+  }
   control.step("pore shapes", 0.5);
   measure_depth(found, geometry, part, shift, control);
   measure_spacing(found, geometry, shift, control);

@@ -12,13 +12,28 @@ namespace {
 // The body moves by an eighth of its size at most: a pore may lie this share of its porosity better within.
 constexpr double step_share = 0.02;
 
+// So few pores say nothing of how many smaller ones there are: the reader is reminded of them.
+constexpr std::int64_t few_pores = 10;
+
+// How many pores are too small to be seen is unknown: no number for them is in the uncertainty.
+void say_what_is_not_in_it(RequirementContext& c, std::int64_t pores) {
+  const double smallest = c.measured.smallest_expected_diameter_mm;
+  if (pores >= few_pores || !(smallest > 0)) return;
+  c.result.warnings.push_back(number_text(
+      "pores below about %.3g mm cannot be seen in this scan: they are neither in this figure nor in its "
+      "uncertainty",
+      smallest));
+}
+
 void moving(RequirementContext& c, const std::optional<WorstPlace>& worst, const std::string& nothing,
             const std::string& what) {
   if (!worst) return c.none(nothing, false);
   const MeasuredPart& m = c.measured;
   const ZoneSums sums = sum_place(m.pores.field, m.pores.pores.size(), m.part, c.zones, c.zone, *worst);
   const double scale = 100 / static_cast<double>(std::max<std::int64_t>(sums.part_voxels, 1));
-  auto contributions = c.total(sums, false).contributions;
+  const auto total = c.total(sums, false);
+  say_what_is_not_in_it(c, total.count);
+  auto contributions = total.contributions;
   for (Contribution& p : contributions) p.standard_uncertainty *= scale;
   contributions.push_back({"steps of the moving body", step_share * worst->percent});
   c.set(worst->percent, contributions);
@@ -33,6 +48,7 @@ void measure_porosity(RequirementContext& c, bool only_open) {
   const double scale = 100 / static_cast<double>(sums.part_voxels);
   for (Contribution& p : t.contributions) p.standard_uncertainty *= scale;
   c.set(std::max(0.0, t.voxels * scale), t.contributions);
+  if (!only_open) say_what_is_not_in_it(c, t.count);
   if (t.largest != nullptr) {
     c.point_at(*t.largest, only_open ? "open porosity, largest pore" : "porosity, largest pore");
   } else {
@@ -85,7 +101,7 @@ PoreSummary summarise_pores(const MeasuredPart& m, const ZoneSet& zones) {
     // Noise and local level are each pore's own; threshold and edge position err alike in all pores.
     for (const Contribution& c : p.volume_mm3.contributions) {
       const double u = c.standard_uncertainty;
-      if (c.name == "noise" || c.name == "digitisation" || c.name == "local level") {
+      if (c.name == "noise" || c.name == "digitisation" || c.name == "mouth" || c.name == "local level") {
         own += u * u;
       } else {
         (c.name == "threshold" ? threshold : edge) += u;

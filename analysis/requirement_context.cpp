@@ -81,7 +81,7 @@ ZoneSums RequirementContext::zone_sums() const {
 
 RequirementContext::Total RequirementContext::total(const ZoneSums& sums, bool only_open) const {
   Total out;
-  double noise = 0, level = 0, threshold = 0, edge = 0, near = 0, most = 0;
+  double noise = 0, level = 0, threshold = 0, edge = 0, mouth = 0, near = 0, most = 0;
   const double voxel = measured.geometry.voxel_volume_mm3();
   for (const Pore& p : measured.pores.pores) {
     const auto id = static_cast<std::size_t>(p.id);
@@ -91,6 +91,7 @@ RequirementContext::Total RequirementContext::total(const ZoneSums& sums, bool o
     if (near_size_limit[id] != 0) near += 0.5 * share;
     if (counts[id] == 0) continue;
     out.voxels += share;
+    ++out.count;
     if (share > most) {
       most = share;
       out.largest = &p;
@@ -100,6 +101,8 @@ RequirementContext::Total RequirementContext::total(const ZoneSums& sums, bool o
       const double u = part * c.standard_uncertainty / voxel;
       if (c.name == "noise" || c.name == "digitisation") {
         noise += u * u;
+      } else if (c.name == "mouth") {
+        mouth += u * u;
       } else if (c.name == "local level") {
         level += u * u;  // largely each ring's own noise
       } else if (c.name == "threshold") {
@@ -113,6 +116,7 @@ RequirementContext::Total RequirementContext::total(const ZoneSums& sums, bool o
                        {"local level", std::sqrt(level)},
                        {"threshold", threshold},
                        {"edge position", edge}};
+  if (mouth > 0) out.contributions.push_back({"mouth", std::sqrt(mouth)});
   if (requirement.ignore_below_mm) out.contributions.push_back({"pores near the size limit", near});
   return out;
 }

@@ -62,6 +62,7 @@ class RequirementContext {
     double voxels = 0;
     std::vector<Contribution> contributions;
     const Pore* largest = nullptr;
+    std::int64_t count = 0;  // pores with a share
   };
   Total total(const ZoneSums& sums, bool only_open) const;
 };

@@ -128,15 +128,19 @@ void judge_pores(std::vector<Pore>& pores, const std::vector<RequirementResult>&
       if (q.ignore_below_mm && pore.equivalent_diameter_mm < *q.ignore_below_mm) continue;
       const bool inclusion = pore.kind == PoreKind::inclusion;
       double margin = 0, u = pore.diameter_standard_uncertainty_mm;
+      // Lengths and depths: that of the deciding pore, which the calipers make alike for all.
+      const double own = r.measured.standard_uncertainty;
       if (q.quantity == Quantity::pore_diameter && !inclusion && q.max) {
         margin = *q.max - pore.equivalent_diameter_mm;
       } else if (q.quantity == Quantity::inclusion_diameter && inclusion && q.max) {
         margin = *q.max - pore.equivalent_diameter_mm;
       } else if (q.quantity == Quantity::pore_length && !inclusion && q.max) {
         margin = *q.max - pore.length_mm;
+        u = std::max(u, own);
       } else if (q.quantity == Quantity::pore_depth && pore.kind == PoreKind::closed && q.min &&
                  !std::isnan(pore.depth_mm)) {
         margin = pore.depth_mm - *q.min;
+        u = own;
       } else {
         continue;
       }

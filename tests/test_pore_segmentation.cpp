@@ -225,3 +225,32 @@ TEST_CASE("the smallest pore to be expected grows with blur and noise and meets 
   levels.blur_voxel = 1.5;
   CHECK(smallest_expected_diameter_mm(found, levels, 0.1) > diameter);
 }
+
+TEST_CASE("in-between grey is a flat plateau, not a void among powder and not a small pore") {
+  const auto geometry = phantoms::cube_geometry(112);
+  const auto kinds_near = [](const Chain& chain, const Vec3& place, double within) {
+    std::vector<PoreKind> kinds;
+    for (const Pore& pore : chain.found.pores) {
+      if (length(pore.centre_mm - place) < within) kinds.push_back(pore.kind);
+    }
+    return kinds;
+  };
+  const Vec3 powder{34, 34, 40}, mixed{78, 78, 60}, emptier{78, 78, 27};
+  for (const double contrast_to_noise : {20.0, 6.0}) {
+    std::vector<ScannedBody> bodies{{box({12, 12, 12}, {100, 100, 100}), 1},
+                                    {sphere(powder, 9), 0.45},
+                                    {sphere(emptier, 8), 0.25},
+                                    {sphere(mixed, 10), 0.4},  // powder with a void in it
+                                    {sphere(mixed + Vec3{2, 1, 0}, 3.5), 0},
+                                    {sphere({34, 78, 78}, 5), 0},
+                                    {sphere({78, 34, 34}, 3), 0}};
+    const Chain chain =
+        run_chain(render_scan(bodies, geometry, scan_model(0.9, contrast_to_noise, 0)), {}, 6);
+    CAPTURE(contrast_to_noise, chain.found.pores.size());
+    CHECK(kinds_near(chain, powder, 4) == std::vector<PoreKind>{PoreKind::in_between});
+    CHECK(kinds_near(chain, {34, 78, 78}, 3) == std::vector<PoreKind>{PoreKind::closed});
+    CHECK(kinds_near(chain, {78, 34, 34}, 3) == std::vector<PoreKind>{PoreKind::closed});
+    CHECK(kinds_near(chain, emptier, 4) == std::vector<PoreKind>{PoreKind::closed});
+    CHECK(kinds_near(chain, mixed, 4) == std::vector<PoreKind>{PoreKind::closed});
+  }
+}

@@ -697,6 +697,17 @@ TEST_CASE("a zone without part proves nothing") {
   }
 }
 
+TEST_CASE("porosity of few pores says what is not in the figure") {
+  Scene scene = some_pores();
+  const ZoneSet zones(scene.spec, scene.geometry, scene.part);
+  assign_zones(scene.pores.pores, zones);
+  MeasuredPart measured{scene.geometry, scene.levels, scene.part, scene.pores};
+  measured.smallest_expected_diameter_mm = 0.21;
+  const auto r = measure_requirement(Scene::requirement(Quantity::porosity), scene.spec, zones, measured);
+  REQUIRE(r.warnings.size() >= 1);
+  CHECK(r.warnings.front().find("pores below about 0.21 mm cannot be seen") != std::string::npos);
+}
+
 TEST_CASE("sums of the pores: kinds, volume, porosity") {
   Scene scene = some_pores();
   scene.add_box("insert", {19, 19, 19}, {25, 25, 25}, ZoneUse::exclude);  // pore 4
