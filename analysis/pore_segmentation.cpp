@@ -12,6 +12,7 @@
 #include "analysis/mask_morphology.h"
 #include "analysis/peak_tree.h"
 #include "analysis/pore_candidates.h"
+#include "analysis/pore_fillings.h"
 #include "analysis/pore_iso50.h"
 #include "analysis/pore_uncertainty.h"
 #include "analysis/pore_windows.h"
@@ -29,18 +30,8 @@ constexpr double ring_voxels = 2.5;
 constexpr double level_prior_share = 0.002;
 // A core of a label is this many edge widths inside it: there the grey value is the filling's own.
 constexpr double core_widths = 3.0;
-constexpr std::int64_t least_core_voxels = 30;
-// Plateaus between these shares of the contrast are neither air nor material: powder, core sand. Loose powder
-// and sand fill a third to two thirds of their room (from memory); what is emptier counts as a void.
-constexpr double in_between_low = 0.2, in_between_high = 0.7;
 // Plateaus above this share are plain air: their mean is the voids' own grey level.
 constexpr double plain_air_share = 0.8;
-// A plateau is flat: its voxels scatter by little more than the noise (times the factor, for the noise of air
-// and material differ) and a filling's own texture, a share of the contrast; its peak rises above it no more
-// than that. What scatters more is a cluster of voids and counts as such.
-constexpr double plateau_noise_factor = 1.5, plateau_texture = 0.08, plateau_peak = 0.15;
-// It differs from air and from material by so many standard errors of its mean.
-constexpr double plateau_standard_errors = 5;
 // So many core voxels make the voids' own grey level better than the air's.
 constexpr std::int64_t enough_void_voxels = 200;
 
@@ -270,26 +261,6 @@ Pore pore_from(const PoreSums& s, const VolumeOfPore& volume, double share, cons
                                          static_cast<double>(s.moment[2]) / weight});
   pore.mean_grey = s.grey / static_cast<double>(std::max<std::int64_t>(s.label_voxels, 1));
   return pore;
-}
-
-double plateau_of(const PoreSums& s) {
-  if (s.core_voxels < least_core_voxels) return 0;
-  return static_cast<double>(s.core) / PoreField::unit / static_cast<double>(s.core_voxels);
-}
-
-// A grey plateau between air and material that blur cannot explain: trapped powder, core sand. The core lies
-// three edge widths inside the label, where blur leaves less than 0.3 % of the edge.
-bool is_in_between(const PoreSums& s, double peak, const GreyLevels& levels, double smoothed_noise) {
-  const double plateau = plateau_of(s);
-  if (plateau <= in_between_low || plateau >= in_between_high) return false;
-  const double n = static_cast<double>(s.core_voxels), unit = PoreField::unit;
-  const double variance =
-      std::max(static_cast<double>(s.core_square) / (unit * unit) / n - plateau * plateau, 0.0);
-  const double noise = plateau_noise_factor / levels.contrast_to_noise;
-  if (variance > noise * noise + plateau_texture * plateau_texture) return false;
-  const double gap = std::min(plateau, 1 - plateau);
-  return gap > plateau_standard_errors * std::sqrt(variance / n) &&
-         peak < plateau + plateau_peak + 4 * smoothed_noise;
 }
 
 PoreKind kind_of(Search search, bool in_between, const Pore& pore) {
