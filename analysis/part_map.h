@@ -35,10 +35,10 @@ struct PartMap {
   // Air of `inside` that is connected with the outside (open pores), 6-connected.
   RunMask open_air;
   double closing_radius_mm = 0;  // of the ball that closed their mouths
-  std::vector<Body> bodies;   // largest first, at least the chosen one
-  int body = 1;               // the chosen one, from 1
-  bool has_outside = true;    // false: material or its pores fill the field
-  bool cut_by_field = false;  // the part reaches the field's border
+  std::vector<Body> bodies;      // largest first, at least the chosen one
+  int body = 1;                  // the chosen one, from 1
+  bool has_outside = true;       // false: material or its pores fill the field
+  bool cut_by_field = false;     // the part reaches the field's border
   std::vector<std::string> warnings;
 };
 
