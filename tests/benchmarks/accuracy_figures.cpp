@@ -35,7 +35,6 @@ void ClassFigures::add(const ClassFigures& other) {
   centre_square += other.centre_square;
   volume_within += other.volume_within;
   volume_pull += other.volume_pull;
-  diameter_u += other.diameter_u;
 }
 
 double ClassFigures::diameter_rms() const { return found == 0 ? 0 : std::sqrt(diameter_square / found); }
@@ -71,7 +70,6 @@ Comparison compare(const std::vector<phantoms::Ball>& balls, const std::vector<P
         std::abs(pores[best].volume_mm3.value - truth) / pores[best].volume_mm3.standard_uncertainty;
     figures.volume_within += pull <= 2;
     figures.volume_pull += pull;
-    figures.diameter_u += pores[best].diameter_standard_uncertainty_mm;
   }
   for (std::size_t i = 0; i < pores.size(); ++i) {
     if (taken[i]) continue;

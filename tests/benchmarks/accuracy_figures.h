@@ -25,10 +25,9 @@ Chain run_chain(const VolumeSource& volume, double closing_radius_mm = 6, bool w
 struct ClassFigures {
   int total = 0, found = 0;
   double volume = 0, diameter_square = 0, centre_square = 0;  // sums over the found ones
-  // Of the stated uncertainty: volumes within U (k = 2), summed |error| / u of volume, summed u of the
-  // diameter.
+  // Of the stated uncertainty: volumes within U (k = 2), summed |error| / u of volume.
   int volume_within = 0;
-  double volume_pull = 0, diameter_u = 0;
+  double volume_pull = 0;
   void add(const ClassFigures& other);
   double found_percent() const { return total == 0 ? 0 : 100.0 * found / total; }
   double volume_error_percent() const { return found == 0 ? 0 : 100 * volume / found; }
