@@ -8,6 +8,8 @@
 #include <type_traits>
 #include <vector>
 
+#include "analysis/edge_places.h"
+
 namespace halfmark {
 
 namespace {
@@ -84,66 +86,12 @@ std::optional<Parameters> fit_edge(const std::vector<Sample>& samples, const Edg
   return p;
 }
 
-struct Edge {
-  std::int64_t x, y, z;
-};
-
-// Where rows along x cross the threshold upwards or downwards, likewise along y and z, on a grid of rows.
-template <class View>
-void collect_edges(const View& view, double threshold, std::vector<Edge>& edges) {
-  const auto& size = view.size();
-  constexpr std::int64_t rows_per_axis = 48;
-  const auto step = [](std::int64_t n) { return std::max<std::int64_t>(1, n / rows_per_axis); };
-  const std::int64_t margin = reach + 1, planes = view.z_end() - view.z_begin();
-  const auto look = [&](std::int64_t x, std::int64_t y, std::int64_t z, std::int64_t dx, std::int64_t dy,
-                        std::int64_t dz) {
-    if (!view.holds(x, y, z, margin)) return;
-    if ((view(x, y, z) >= threshold) != (view(x + dx, y + dy, z + dz) >= threshold))
-      edges.push_back({x, y, z});
-  };
-  const std::int64_t sx = step(size[0]), sy = step(size[1]), sz = step(planes);
-  for (std::int64_t z = view.z_begin() + margin; z + margin < view.z_end(); z += sz) {
-    for (std::int64_t y = margin; y + margin < size[1]; y += sy) {
-      for (std::int64_t x = margin; x + margin < size[0]; ++x) look(x, y, z, 1, 0, 0);
-    }
-  }
-  for (std::int64_t z = view.z_begin() + margin; z + margin < view.z_end(); z += sz) {
-    for (std::int64_t y = margin; y + margin < size[1]; ++y) {
-      for (std::int64_t x = margin; x + margin < size[0]; x += sx) look(x, y, z, 0, 1, 0);
-    }
-  }
-  for (std::int64_t z = view.z_begin() + margin; z + margin < view.z_end(); ++z) {
-    for (std::int64_t y = margin; y + margin < size[1]; y += sy) {
-      for (std::int64_t x = margin; x + margin < size[0]; x += sx) look(x, y, z, 0, 0, 1);
-    }
-  }
-}
-
-// Gradient of the least-squares plane through the grey values within `half` voxels, per voxel of voxel_mm().
-template <class View>
-Vec3 local_gradient(const View& view, const Edge& e, const Vec3& scale, std::int64_t half) {
-  Vec3 sum{0, 0, 0};
-  for (std::int64_t z = -half; z <= half; ++z) {
-    for (std::int64_t y = -half; y <= half; ++y) {
-      for (std::int64_t x = -half; x <= half; ++x) {
-        const double g = view(e.x + x, e.y + y, e.z + z);
-        sum = sum + g * Vec3{static_cast<double>(x), static_cast<double>(y), static_cast<double>(z)};
-      }
-    }
-  }
-  return {sum[0] / scale[0], sum[1] / scale[1], sum[2] / scale[2]};
-}
-
 template <class View>
 std::optional<double> blur_variance_at(const View& view, const Edge& e, const Vec3& scale,
                                        const EdgeLevels& levels, std::vector<Sample>& samples) {
   const Vec3 gradient = local_gradient(view, e, scale, 2);
   if (length(gradient) <= 0) return std::nullopt;
-  const Vec3 n = (1 / length(gradient)) * gradient;
-  const Vec3 helper = std::abs(n[0]) < 0.6 ? Vec3{1, 0, 0} : Vec3{0, 1, 0};
-  Vec3 u = cross(n, helper);
-  u = (1 / length(u)) * u;
-  const Vec3 v = cross(n, u);
+  const auto [n, u, v] = frame_along(gradient);
   samples.clear();
   for (std::int64_t z = -reach; z <= reach; ++z) {
     for (std::int64_t y = -reach; y <= reach; ++y) {
@@ -185,7 +133,7 @@ BlurEstimate estimate_blur(const VolumeSource& source, const SampleWindows& wind
     for (const auto& window : windows.windows()) {
       const WindowView<T> view(window, geometry.size);
       std::vector<Edge> edges;
-      collect_edges(view, threshold, edges);
+      collect_edges(view, threshold, reach + 1, edges);
       const std::size_t most = std::max<std::size_t>(1, most_edges / windows.windows().size());
       const std::size_t tries = std::min(edges.size(), most);
       for (std::size_t i = 0; i < tries; ++i) {

@@ -35,6 +35,7 @@ struct GreyLevels {
   std::string source = "auto";                // "auto", "spec" or "spec, auto" (one of the two levels given)
   std::vector<double> other_peaks;            // further modes (a third material ...)
   bool air_seen = true, material_seen = true;
+  bool material_plateau = true;  // some material is thick enough to show its level clear of any edge
   Histogram histogram;
   std::vector<std::string> warnings;  // what looks wrong, in plain words
 

@@ -263,3 +263,31 @@ TEST_CASE("contrast-to-noise of 4 carries levels") {
                  45000, 25000 / cnr, 0.02);
   }
 }
+
+TEST_CASE("thin walls tell the level that they nowhere reach") {
+  for (const double degrees : {0.0, 17.0}) {
+    for (const double thickness : {4.0, 5.0, 7.0, 10.0}) {
+      for (const double blur : {0.7, 1.0}) {
+        const SolidPtr plate = moved(box({12, 12, 48 - thickness / 2}, {84, 84, 48 + thickness / 2}),
+                                     rotation_about({1, 0.4, 0.1}, degrees), {48, 48, 48}, {0.1, 0.2, 0.3});
+        const GreyLevels levels =
+            levels_of(render_scan({{plate, 1}}, phantoms::cube_geometry(96), scan_model(blur, 15, 0)));
+        const double off = (levels.material - 45000) / 25000;
+        CAPTURE(degrees, thickness, blur, levels.blur_voxel, off,
+                levels.threshold_standard_uncertainty / 25000);
+        CHECK(std::abs(off) < 0.01);
+        CHECK(std::abs(levels.threshold - 32500) < 2 * levels.threshold_standard_uncertainty);
+        CHECK(std::abs(levels.blur_voxel / blur - 1) < 0.06);
+      }
+    }
+  }
+}
+
+TEST_CASE("walls too thin for the blur to tell their level get a warning and a wide uncertainty") {
+  const SolidPtr plate = box({12, 12, 45.8}, {84, 84, 49.8});
+  const GreyLevels levels =
+      levels_of(render_scan({{plate, 1}}, phantoms::cube_geometry(96), scan_model(1.5, 15, 0)));
+  CAPTURE(levels.material, levels.threshold_standard_uncertainty / 25000);
+  CHECK_FALSE(levels.warnings.empty());
+  CHECK(levels.threshold_standard_uncertainty > 0.03 * 25000);
+}
