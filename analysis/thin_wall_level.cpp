@@ -8,6 +8,7 @@
 #include <numbers>
 #include <optional>
 #include <type_traits>
+#include <utility>
 #include <vector>
 
 #include "analysis/edge_places.h"
@@ -20,7 +21,7 @@ constexpr std::size_t most_places = 500;
 constexpr std::size_t enough_walls = 20;
 // Walls looked for; thicker ones have a plateau that other estimates find.
 constexpr double thickest_voxels = 13;
-constexpr double beside_voxels = 2.3, beyond_voxels = 4.5;
+constexpr double beside_voxels = 2.3, beyond_voxels = 4.5, clear_of_rim_voxels = 3;
 constexpr std::int64_t reach = 16;  // thickest wall and what lies beyond, from a place inside the near face
 // A level that its own fit leaves this uncertain says nothing.
 constexpr double worst_level_share = 0.05;
@@ -115,8 +116,8 @@ std::optional<WallFit> fit_wall(const std::vector<Sample>& samples, const EdgeLe
 template <class View>
 class WallSampler {
  public:
-  WallSampler(const View& view, const Vec3& scale, const EdgeLevels& levels)
-      : view_(view), scale_(scale), levels_(levels) {}
+  WallSampler(const View& view, const FieldOfView& field, const Vec3& scale, const EdgeLevels& levels)
+      : view_(view), field_(field), scale_(scale), levels_(levels) {}
 
   // Distance along the normal from the place to the far face; none within the thickest wall.
   std::optional<double> thickness_at(const Edge& e, const LocalFrame& frame) const {
@@ -125,6 +126,16 @@ class WallSampler {
       if (mean_at(e, frame, t) < threshold && mean_at(e, frame, t + 1) < threshold) return t;
     }
     return std::nullopt;
+  }
+
+  // The wall goes on around the place: no rim within reach of the blur.
+  bool is_wide(const Edge& e, const LocalFrame& frame, double thickness) const {
+    const double threshold = 0.5 * (levels_.air + levels_.material),
+                 far = beside_voxels + clear_of_rim_voxels;
+    for (const auto& [u, v] : {std::pair{far, 0.0}, {-far, 0.0}, {0.0, far}, {0.0, -far}}) {
+      if (mean_at(e, frame, 0.5 * thickness, u, v) < threshold) return false;
+    }
+    return true;
   }
 
   void collect(const Edge& e, const LocalFrame& frame, double thickness, std::vector<Sample>& samples) const {
@@ -147,25 +158,32 @@ class WallSampler {
           if (t < -beyond_voxels || t > thickness + beyond_voxels ||
               u * u + v * v > beside_voxels * beside_voxels)
             continue;
-          samples.push_back({t, u, v, view_(e.x + x, e.y + y, e.z + z)});
+          if (holds(e.x + x, e.y + y, e.z + z))
+            samples.push_back({t, u, v, view_(e.x + x, e.y + y, e.z + z)});
         }
       }
     }
   }
 
  private:
-  // Mean of the voxels next to the point at t and four points one voxel beside it.
-  double mean_at(const Edge& e, const LocalFrame& frame, double t) const {
+  bool holds(std::int64_t x, std::int64_t y, std::int64_t z) const {
+    return view_.holds(x, y, z, 0) && (field_.whole() || contains(field_.rows, x, y, z));
+  }
+
+  // Mean of the voxels next to the point (t, u0, v0) and four points one voxel beside it.
+  double mean_at(const Edge& e, const LocalFrame& frame, double t, double u0 = 0, double v0 = 0) const {
     double sum = 0;
     for (const auto& [u, v] : {std::pair{0.0, 0.0}, {1.0, 0.0}, {-1.0, 0.0}, {0.0, 1.0}, {0.0, -1.0}}) {
-      const Vec3 d = t * frame.n + u * frame.u + v * frame.v;
-      sum += view_(e.x + std::lround(d[0] / scale_[0]), e.y + std::lround(d[1] / scale_[1]),
-                   e.z + std::lround(d[2] / scale_[2]));
+      const Vec3 d = t * frame.n + (u0 + u) * frame.u + (v0 + v) * frame.v;
+      const std::int64_t x = e.x + std::lround(d[0] / scale_[0]), y = e.y + std::lround(d[1] / scale_[1]),
+                         z = e.z + std::lround(d[2] / scale_[2]);
+      sum += holds(x, y, z) ? view_(x, y, z) : levels_.material;  // no face is seen beyond the field
     }
     return sum / 5;
   }
 
   const View& view_;
+  const FieldOfView& field_;
   Vec3 scale_;
   EdgeLevels levels_;
 };
@@ -205,23 +223,18 @@ ThinWallLevel estimate_thin_walls(const VolumeSource& source, const SampleWindow
     std::vector<Sample> samples;
     for (const auto& window : windows.windows()) {
       const WindowView<T> view(window, geometry.size);
-      const WallSampler sampler(view, scale, levels);
+      const WallSampler sampler(view, field, scale, levels);
       std::vector<Edge> edges;
-      collect_edges(view, threshold, reach + 1, edges);
+      collect_edges(view, threshold, 3, edges);
       const std::size_t tries =
           std::min(edges.size(), std::max<std::size_t>(1, most_places / windows.windows().size()));
       for (std::size_t i = 0; i < tries; ++i) {
         const Edge& e = edges[i * edges.size() / tries];
-        if (!field.whole() && !(contains(field.rows, e.x - reach, e.y - reach, e.z) &&
-                                contains(field.rows, e.x + reach, e.y + reach, e.z) &&
-                                contains(field.rows, e.x - reach, e.y + reach, e.z) &&
-                                contains(field.rows, e.x + reach, e.y - reach, e.z)))
-          continue;
         const Vec3 gradient = local_gradient(view, e, scale, 2);
         if (length(gradient) <= 0) continue;
         const LocalFrame frame = frame_along(gradient);
         const auto thickness = sampler.thickness_at(e, frame);
-        if (!thickness) continue;
+        if (!thickness || !sampler.is_wide(e, frame, *thickness)) continue;
         sampler.collect(e, frame, *thickness, samples);
         if (samples.size() < 60) continue;
         const auto fit = fit_wall(samples, levels, *thickness);

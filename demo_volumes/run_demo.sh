@@ -11,7 +11,7 @@ cd "$here"
 
 bash .ci/install_packages.sh
 cmake --preset release >"$out/build.log" || { tail -n 40 "$out/build.log" >&2; exit 1; }
-cmake --build --preset release
+cmake --build --preset release --target halfmark demo_check
 
 halfmark=build/release/cli/halfmark
 "$halfmark" demo bracket --out "$out"
