@@ -8,7 +8,9 @@
 //
 // A closing also fills every concave edge. In a right-angled edge between two planes the fill has an
 // inscribed radius of (3 - 2 sqrt 2) r = 0.17 r; fills thinner than min_inscribed_share * r are given back to
-// the outside.
+// the outside. A corner of three planes leaves (sqrt 3 - 1) / (sqrt 3 + 1) r = 0.27 r, as wide as a small
+// pore; but most of its border is open, where a pore's is material: what is not clearly wider than a corner's
+// fill must have a small mouth.
 #include "analysis/part_map.h"
 
 #include <algorithm>
@@ -24,6 +26,9 @@ namespace halfmark {
 namespace {
 
 constexpr double min_inscribed_share = 0.25;
+constexpr double corner_inscribed_share = 0.27;
+// Of the border's voxel faces. A blind hole as deep as its radius: 0.25; a corner's fill: a half and more.
+constexpr double largest_mouth_share = 0.3;
 // Distances between voxel centres read up to half a voxel more than to the surface between them.
 constexpr double centre_to_face_voxels = 0.5;
 // Below this a loose speck is noise or dust, not a body worth listing.
@@ -181,6 +186,52 @@ RunMask rolled_over(const RunMask& material, const FieldOfView& field, const Par
   return padded(dilate(reached, options.closing_radius_mm, spacing_mm, control), -margin);
 }
 
+std::int64_t overlap_of(const LabelRun& run, std::span<const Run> row) {
+  std::int64_t sum = 0;
+  for (auto r = std::upper_bound(row.begin(), row.end(), run.begin,
+                                 [](std::int32_t x, const Run&other) { return x < other.end; });
+       r != row.end() && r->begin < run.end; ++r)
+    sum += std::min(run.end, r->end) - std::max(run.begin, r->begin);
+  return sum;
+}
+
+// Voxel faces of each label towards a mask.
+std::vector<std::int64_t> faces_towards(const RunLabels& labels, std::int32_t count, const RunMask& mask) {
+  std::vector<std::int64_t> faces(static_cast<std::size_t>(count) + 1, 0);
+  const auto& size = labels.size();
+  for (std::int64_t z = 0; z < size[2]; ++z) {
+    for (std::int64_t y = 0; y < size[1]; ++y) {
+      for (const LabelRun& run : labels.row(y, z)) {
+        std::int64_t& sum = faces[static_cast<std::size_t>(run.label)];
+        sum += contains(mask, run.begin - 1, y, z) + contains(mask, run.end, y, z);
+        if (y > 0) sum += overlap_of(run, mask.row(y - 1, z));
+        if (y + 1 < size[1]) sum += overlap_of(run, mask.row(y + 1, z));
+        if (z > 0) sum += overlap_of(run, mask.row(y, z - 1));
+        if (z + 1 < size[2]) sum += overlap_of(run, mask.row(y, z + 1));
+      }
+    }
+  }
+  return faces;
+}
+
+// Labels whose border is material but for a small mouth: what lies beside them in `open` outside of
+// themselves, and the outside, is mouth.
+std::vector<std::uint8_t> labels_with_small_mouth(const Components& pores, const RunMask& wide,
+                                                  const RunMask& outside, const RunMask& open) {
+  const auto faces = [&](const RunMask& mask) { return faces_towards(pores.labels, pores.count, mask); };
+  const std::vector<std::int64_t> to_outside = faces(outside), to_rest = faces(difference(open, wide)),
+                                  within = faces(wide);
+  std::vector<std::int64_t> border(within.size(), 0);
+  for (const LabelRun& run : pores.labels.runs())
+    border[static_cast<std::size_t>(run.label)] += 4 * (run.end - run.begin) + 2;  // along x only the ends
+  std::vector<std::uint8_t> small(border.size(), 0);
+  for (std::size_t l = 1; l < small.size(); ++l) {
+    const auto mouth = static_cast<double>(to_outside[l] + to_rest[l]);
+    small[l] = mouth <= largest_mouth_share * static_cast<double>(border[l] - within[l]) ? 1 : 0;
+  }
+  return small;
+}
+
 struct Hollows {
   RunMask open;     // open pores
   RunMask shallow;  // belongs to the outside after all
@@ -202,8 +253,17 @@ Hollows sort_hollows(const RunMask& hollow, const RunMask& outside, const PartOp
   const RunMask deep = options.open_min_depth_mm > 0
                            ? difference(wide, dilate(outside, options.open_min_depth_mm, spacing_mm, control))
                            : wide;
+  std::vector<std::uint8_t> keep = labels_in(pores.labels, pores.count, deep);
+  const double clearly_wide =
+      corner_inscribed_share * options.closing_radius_mm + 2 * centre_to_face_voxels * voxel;
+  const std::vector<std::uint8_t> surely =
+      labels_in(pores.labels, pores.count, erode(open, clearly_wide, spacing_mm, true, control));
+  const std::vector<std::uint8_t> small_mouth = labels_with_small_mouth(pores, wide, outside, open);
+  for (std::size_t l = 1; l < keep.size(); ++l) {
+    if (surely[l] == 0 && small_mouth[l] == 0) keep[l] = 0;
+  }
   Hollows out;
-  out.open = selected(pores.labels, labels_in(pores.labels, pores.count, deep));
+  out.open = selected(pores.labels, keep);
   out.shallow = difference(open, out.open);
   return out;
 }

@@ -100,6 +100,31 @@ TEST_CASE("concave edges are not open pores") {
   CHECK(part.inside.voxel_count() == part.material.voxel_count());
 }
 
+TEST_CASE("corners of three planes are not open pores, small pores with a neck are") {
+  for (const double shift : {0.0, 0.3, 0.5, 0.8}) {
+    // A box with a square pit: four corners of three planes at its bottom. Beside it a belly of 2.6 voxels
+    // radius with a neck of 1.6.
+    const auto volume = volume_of({64, 56, 44}, [shift](double x, double y, double z) {
+      x += shift, y += 0.7 * shift, z += 0.4 * shift;
+      if (!in_box(x, y, 1.5 * z, 6, 50)) return false;
+      if (x > 12 && x < 30 && y > 12 && y < 40 && z > 14) return false;
+      if (distance(x, y, z, {41, 26, 24}) < 2.6) return false;
+      return !(z > 24 && std::hypot(x - 41, y - 26) < 1.6);
+    });
+    const PartMap part = part_of(volume);
+    CAPTURE(shift, part.open_air.voxel_count());
+    CHECK(contains(part.open_air, std::lround(41 - shift), std::lround(26 - 0.7 * shift),
+                   std::lround(24 - 0.4 * shift)));
+    for (std::int64_t z = 12; z < 40; ++z) {
+      for (std::int64_t y = 10; y < 42; ++y) {
+        for (std::int64_t x = 10; x < 32; ++x) {
+          if (contains(part.open_air, x, y, z)) FAIL("open pore in the pit at " << x << " " << y << " " << z);
+        }
+      }
+    }
+  }
+}
+
 TEST_CASE("a tightly cropped part still has an outside") {
   const auto volume = volume_of({40, 40, 40}, [](double x, double y, double z) {
     return in_box(x, y, z, 2, 38) && distance(x, y, z, {20, 20, 20}) >= 5;
