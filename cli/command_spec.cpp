@@ -4,6 +4,7 @@
 #include "cli/commands.h"
 #include "io/inspection_spec.h"
 #include "io/problem.h"
+#include "io/spec_schema.h"
 
 namespace halfmark {
 
@@ -15,6 +16,13 @@ Command add_spec_check(CLI::App& app) {
     std::printf("%s: sound; %zu requirement%s, %zu zone%s\n", file->c_str(), spec.requirements.size(),
                 spec.requirements.size() == 1 ? "" : "s", spec.zones.size(),
                 spec.zones.size() == 1 ? "" : "s");
+    return 0;
+  };
+}
+
+Command add_spec_schema(CLI::App&) {
+  return [] {
+    std::fputs(spec_schema_text(), stdout);
     return 0;
   };
 }

@@ -16,6 +16,7 @@ Command add_inspect(CLI::App& app);
 Command add_levels(CLI::App& app);
 Command add_demo(CLI::App& app);
 Command add_convert(CLI::App& app);
-Command add_spec_check(CLI::App& app);  // of the group `spec`
+Command add_spec_check(CLI::App& app);  // these two of the group `spec`
+Command add_spec_schema(CLI::App& app);
 
 }  // namespace halfmark

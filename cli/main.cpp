@@ -46,6 +46,7 @@ int main(int argc, char** argv) {
   spec->require_subcommand(1);
   add(spec->add_subcommand("check", "validate a spec and name every problem by its place"),
       halfmark::add_spec_check);
+  add(spec->add_subcommand("schema", "print the JSON Schema of inspection specs"), halfmark::add_spec_schema);
 
   try {
     app.parse(argc, argv);

@@ -9,6 +9,8 @@
 
 #include "io/json_object.h"
 #include "io/problem.h"
+#include "io/spec_schema.h"
+#include "io/spec_zones.h"
 #include "io/volume_open.h"
 
 namespace halfmark {
@@ -20,6 +22,7 @@ using nlohmann::json;
 
 constexpr std::uintmax_t largest_spec = 4u << 20;
 constexpr int deepest_nesting = 32;
+constexpr std::size_t most_values = 100000;
 
 struct QuantityRule {
   Quantity quantity;
@@ -81,6 +84,14 @@ int nesting_of(const std::string& text) {
   return deepest;
 }
 
+std::size_t value_count(const json& value) {
+  std::size_t count = 1;
+  if (value.is_structured()) {
+    for (const json& member : value) count += value_count(member);
+  }
+  return count;
+}
+
 std::string line_and_column(const std::string& text, std::size_t byte) {
   const std::size_t end = std::min(byte > 0 ? byte - 1 : 0, text.size());
   const auto line = 1 + std::count(text.begin(), text.begin() + static_cast<std::ptrdiff_t>(end), '\n');
@@ -91,8 +102,8 @@ std::string line_and_column(const std::string& text, std::size_t byte) {
 
 class SpecReader {
  public:
-  SpecReader(const fs::path& folder, std::vector<SpecProblem>& problems)
-      : folder_(folder), problems_(problems) {}
+  SpecReader(const fs::path& folder, std::vector<SpecProblem>& problems, bool with_schema)
+      : folder_(folder), problems_(problems), with_schema_(with_schema) {}
 
   InspectionSpec read(const std::string& text) {
     InspectionSpec spec;
@@ -110,21 +121,30 @@ class SpecReader {
       return fail(spec, parse_error != nullptr ? line_and_column(text, parse_error->byte) : "file",
                   "is not valid JSON: " + (colon == std::string::npos ? what : what.substr(colon + 2)));
     }
+    if (value_count(root) > most_values)
+      return fail(spec, "file",
+                  "holds more than " + std::to_string(most_values) + " values; this is no inspection spec");
+    if (doubled_.size() > most_spec_problems) doubled_.resize(most_spec_problems);
     for (const std::string& key : doubled_) problems_.push_back({key, "stands twice in the same object"});
     JsonObject object(root, "", problems_);
     if (!root.is_object()) return spec;
-    object.allow({"spec_version", "title", "part", "grey_levels", "surface", "pores", "wall_thickness",
-                  "zones", "requirements", "decision"},
-                 {"scale", "alignment", "nominal", "features", "temperature", "scan"});
-    read_head(object, spec);
-    read_methods(object, spec);
-    read_zones(object, spec);
-    read_requirements(object, spec);
-    read_decision(object, spec);
+    read_all(object, spec);
+    if (with_schema_ && problems_.size() < most_spec_problems) add_unnamed(problems_, schema_problems(root));
     return spec;
   }
 
  private:
+  void read_all(JsonObject& object, InspectionSpec& spec) {
+    object.allow({"spec_version", "title", "part", "grey_levels", "surface", "pores", "wall_thickness",
+                  "zones", "requirements", "decision", "$schema"},
+                 {"scale", "alignment", "nominal", "features", "temperature", "scan"});
+    read_head(object, spec);
+    read_methods(object, spec);
+    read_spec_zones(object, folder_, problems_, spec);
+    read_requirements(object, spec);
+    read_decision(object, spec);
+  }
+
   InspectionSpec fail(InspectionSpec& spec, const std::string& place, const std::string& sentence) {
     problems_.push_back({place, sentence});
     return spec;
@@ -151,6 +171,7 @@ class SpecReader {
       object.problem("spec_version", "only version 1 is read");
     }
     spec.title = object.text("title");
+    object.text("$schema");
     if (!object.has("part")) return;
     JsonObject part(object.raw("part"), "part", problems_);
     part.allow({"name", "drawing", "revision", "material", "customer_order"});
@@ -205,161 +226,6 @@ class SpecReader {
     }
   }
 
-  void read_shape(JsonObject& zone, ZoneSpec& out) {
-    const std::string shape = zone.choice(
-        "shape", "everything",
-        {"everything", "box", "cylinder", "sphere", "skin", "mesh", "union", "difference"}, {"wall_band"});
-    static const std::map<std::string, std::vector<std::string>> keys{
-        {"everything", {}},
-        {"box", {"min_mm", "max_mm"}},
-        {"cylinder", {"from_mm", "to_mm", "radius_mm"}},
-        {"sphere", {"centre_mm", "radius_mm"}},
-        {"skin", {"depth_mm"}},
-        {"mesh", {"file"}},
-        {"union", {"of"}},
-        {"difference", {"of"}}};
-    std::vector<std::string> allowed{"id", "shape", "use"};
-    allowed.insert(allowed.end(), keys.at(shape).begin(), keys.at(shape).end());
-    zone.allow(allowed);
-    const auto radius = [&] {
-      if (!zone.has("radius_mm")) zone.problem("radius_mm", "is missing");
-      return zone.number_above("radius_mm", 1, 0, false);
-    };
-    if (shape == "box") {
-      out.shape = ZoneShape::box;
-      out.min_mm = zone.point("min_mm").value_or(Vec3{0, 0, 0});
-      out.max_mm = zone.point("max_mm").value_or(Vec3{1, 1, 1});
-      for (std::size_t a = 0; a < 3; ++a) {
-        if (!(out.min_mm[a] < out.max_mm[a])) {
-          zone.problem("max_mm", "must be above min_mm along every axis");
-          break;
-        }
-      }
-    } else if (shape == "cylinder") {
-      out.shape = ZoneShape::cylinder;
-      out.from_mm = zone.point("from_mm").value_or(Vec3{0, 0, 0});
-      out.to_mm = zone.point("to_mm").value_or(Vec3{0, 0, 1});
-      if (!(length(out.to_mm - out.from_mm) > 0)) zone.problem("to_mm", "must differ from from_mm");
-      out.radius_mm = radius();
-    } else if (shape == "sphere") {
-      out.shape = ZoneShape::sphere;
-      out.centre_mm = zone.point("centre_mm").value_or(Vec3{0, 0, 0});
-      out.radius_mm = radius();
-    } else if (shape == "skin") {
-      out.shape = ZoneShape::skin;
-      read_depth(zone, out);
-    } else if (shape == "mesh") {
-      out.shape = ZoneShape::mesh;
-      read_mesh_file(zone, out);
-    } else if (shape == "union" || shape == "difference") {
-      out.shape = shape == "union" ? ZoneShape::union_of : ZoneShape::difference;
-      read_parts(zone, out);
-    }
-  }
-
-  void read_depth(JsonObject& zone, ZoneSpec& out) {
-    if (!zone.has("depth_mm")) {
-      zone.problem("depth_mm", "is missing: the depth below the surface, a number or [from, to]");
-      return;
-    }
-    const json& depth = zone.raw("depth_mm");
-    if (depth.is_array()) {
-      const bool sound = depth.size() == 2 && depth[0].is_number() && depth[1].is_number();
-      if (sound) {
-        out.from_depth_mm = depth[0].get<double>();
-        out.depth_mm = depth[1].get<double>();
-      }
-      if (!sound || !(out.from_depth_mm >= 0 && out.depth_mm > out.from_depth_mm))
-        zone.problem("depth_mm", "must be [from, to] with 0 <= from < to");
-    } else {
-      out.depth_mm = zone.number_above("depth_mm", 1, 0, false);
-    }
-  }
-
-  void read_mesh_file(JsonObject& zone, ZoneSpec& out) {
-    const std::string name = zone.required_text("file");
-    if (name.empty()) return;
-    const fs::path base = fs::weakly_canonical(folder_.empty() ? fs::path(".") : folder_),
-                   target = fs::weakly_canonical(base / name);
-    const auto mismatch = std::mismatch(base.begin(), base.end(), target.begin(), target.end());
-    if (fs::path(name).is_absolute() || mismatch.first != base.end()) {
-      zone.problem("file", "'" + name + "' does not lie in the spec's folder or below; move it there");
-    } else if (!fs::is_regular_file(target)) {
-      zone.problem("file", "'" + name + "' does not exist beside the spec");
-    }
-    out.file = folder_ / name;
-  }
-
-  void read_parts(JsonObject& zone, ZoneSpec& out) {
-    const bool listed = zone.has("of") && zone.raw("of").is_array() && zone.raw("of").size() >= 1;
-    if (listed) {
-      for (const json& id : zone.raw("of")) {
-        if (!id.is_string()) zone.problem("of", "must be a list of zone ids");
-        if (id.is_string()) out.of.push_back(id.get<std::string>());
-      }
-    } else {
-      zone.problem("of", "must be a list of zone ids");
-    }
-  }
-
-  void read_zones(JsonObject& object, InspectionSpec& spec) {
-    if (object.has("zones") && !object.raw("zones").is_array()) object.problem("zones", "must be a list");
-    if (object.has("zones") && object.raw("zones").is_array()) {
-      std::size_t i = 0;
-      for (const json& entry : object.raw("zones")) {
-        std::string place = "zones[" + std::to_string(i++) + "]";
-        if (entry.is_object() && entry.contains("id") && entry["id"].is_string())
-          place += " (" + entry["id"].get<std::string>() + ")";
-        JsonObject zone(entry, place, problems_);
-        if (!entry.is_object()) continue;
-        ZoneSpec out;
-        out.id = zone.required_text("id");
-        if (!zone.has("shape")) zone.problem("shape", "is missing");
-        read_shape(zone, out);
-        const std::string use = zone.choice("use", "inspect", {"inspect", "exclude", "expected_void"});
-        out.use = use == "exclude"         ? ZoneUse::exclude
-                  : use == "expected_void" ? ZoneUse::expected_void
-                                           : ZoneUse::inspect;
-        for (const ZoneSpec& other : spec.zones) {
-          if (other.id == out.id && !out.id.empty())
-            zone.problem("id", "'" + out.id + "' names another zone already");
-        }
-        spec.zones.push_back(std::move(out));
-      }
-    }
-    check_parts(spec);
-  }
-
-  void check_parts(const InspectionSpec& spec) {
-    std::vector<std::string> ids;
-    for (const ZoneSpec& zone : spec.zones) ids.push_back(zone.id);
-    const auto find = [&](const std::string& id) {
-      return std::find_if(spec.zones.begin(), spec.zones.end(),
-                          [&](const ZoneSpec& z) { return z.id == id; });
-    };
-    for (std::size_t i = 0; i < spec.zones.size(); ++i) {
-      const std::string place = "zones[" + std::to_string(i) + "] (" + spec.zones[i].id + ").of";
-      for (const std::string& id : spec.zones[i].of) {
-        if (find(id) == spec.zones.end())
-          problems_.push_back({place, "unknown zone '" + id + "'" + suggestion(id, ids)});
-      }
-      // Follow the parts down; more steps than zones means a circle.
-      std::vector<std::string> open = spec.zones[i].of;
-      std::set<std::string> seen;
-      while (!open.empty()) {
-        const std::string id = open.back();
-        open.pop_back();
-        if (id == spec.zones[i].id) {
-          problems_.push_back({place, "leads back to the zone itself"});
-          break;
-        }
-        const auto zone = find(id);
-        if (zone != spec.zones.end() && seen.insert(id).second)
-          open.insert(open.end(), zone->of.begin(), zone->of.end());
-      }
-    }
-  }
-
   void read_requirements(JsonObject& object, InspectionSpec& spec) {
     if (!object.has("requirements") || !object.raw("requirements").is_array() ||
         object.raw("requirements").empty()) {
@@ -367,6 +233,7 @@ class SpecReader {
                      "must be a list of at least one requirement; without one nothing can be decided");
       return;
     }
+    if (!object.is_list_up_to("requirements", most_spec_entries)) return;
     std::size_t i = 0;
     for (const json& entry : object.raw("requirements")) {
       std::string place = "requirements[" + std::to_string(i++) + "]";
@@ -488,6 +355,7 @@ class SpecReader {
 
   fs::path folder_;
   std::vector<SpecProblem>& problems_;
+  bool with_schema_;
   std::vector<std::string> doubled_;
 };
 
@@ -495,13 +363,19 @@ class SpecReader {
 
 std::vector<SpecProblem> check_spec_text(const std::string& json_text, const fs::path& folder) {
   std::vector<SpecProblem> problems;
-  SpecReader(folder, problems).read(json_text);
+  SpecReader(folder, problems, true).read(json_text);
+  return problems;
+}
+
+std::vector<SpecProblem> reader_problems(const std::string& json_text, const fs::path& folder) {
+  std::vector<SpecProblem> problems;
+  SpecReader(folder, problems, false).read(json_text);
   return problems;
 }
 
 InspectionSpec parse_spec(const std::string& json_text, const fs::path& folder) {
   std::vector<SpecProblem> problems;
-  InspectionSpec spec = SpecReader(folder, problems).read(json_text);
+  InspectionSpec spec = SpecReader(folder, problems, true).read(json_text);
   if (problems.empty()) return spec;
   std::string all;
   for (const SpecProblem& p : problems) all += (all.empty() ? "" : "\n") + p.place + ": " + p.sentence;

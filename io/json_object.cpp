@@ -83,6 +83,7 @@ JsonObject::JsonObject(const nlohmann::json& value, std::string place, std::vect
 
 void JsonObject::allow(const std::vector<std::string>& keys, const std::vector<std::string>& reserved) {
   for (const auto& [key, value] : value_.items()) {
+    if (problems_.size() >= most_spec_problems) return;
     if (std::find(keys.begin(), keys.end(), key) != keys.end()) continue;
     if (std::find(reserved.begin(), reserved.end(), key) != reserved.end()) {
       problem(key, "is not supported by this version");
@@ -139,6 +140,13 @@ bool JsonObject::flag(const std::string& key, bool otherwise) {
     return otherwise;
   }
   return raw(key).get<bool>();
+}
+
+bool JsonObject::is_list_up_to(const std::string& key, std::size_t entries) {
+  if (!has(key) || !raw(key).is_array()) return false;
+  if (raw(key).size() <= entries) return true;
+  problem(key, "has more than " + std::to_string(entries) + " entries");
+  return false;
 }
 
 std::optional<Vec3> JsonObject::point(const std::string& key) {

@@ -10,6 +10,10 @@
 
 namespace halfmark {
 
+// Far beyond any drawing: entries of a list, and problems after which no more are looked for. They keep a
+// hostile file from taking minutes.
+constexpr std::size_t most_spec_entries = 1000, most_spec_problems = 1000;
+
 class JsonObject {
  public:
   // `place`: where the object stands, "" for the whole file. A value that is no object is a problem.
@@ -21,7 +25,10 @@ class JsonObject {
 
   bool has(const std::string& key) const { return value_.is_object() && value_.contains(key); }
   const nlohmann::json& raw(const std::string& key) const { return value_.at(key); }
-  std::string place_of(const std::string& key) const { return place_.empty() ? key : place_ + "." + key; }
+  // An empty key means the object itself.
+  std::string place_of(const std::string& key) const {
+    return place_.empty() || key.empty() ? place_ + key : place_ + "." + key;
+  }
   const std::string& place() const { return place_; }
 
   std::string text(const std::string& key, const std::string& otherwise = "");
@@ -29,6 +36,8 @@ class JsonObject {
   std::optional<double> number(const std::string& key);  // finite
   double number_above(const std::string& key, double otherwise, double bound, bool bound_allowed);
   bool flag(const std::string& key, bool otherwise);
+  // Whether there is a list of at most so many entries; a longer one is a problem, another type is not.
+  bool is_list_up_to(const std::string& key, std::size_t entries);
   std::optional<Vec3> point(const std::string& key);
   // One of the choices; reserved ones are "not in this version".
   std::string choice(const std::string& key, const std::string& otherwise,

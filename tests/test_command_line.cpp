@@ -171,6 +171,13 @@ TEST_CASE("every problem of a spec is named by its place") {
   CHECK(halfmark("spec check " + (folder / "good.json")).status == 0);
 }
 
+TEST_CASE("the spec's schema is printed whole") {
+  const Outcome outcome = halfmark("spec schema");
+  CHECK(outcome.status == 0);
+  std::ifstream file(HALFMARK_SOURCE_DIR "/io/spec.schema.json");
+  CHECK(outcome.text == std::string(std::istreambuf_iterator<char>(file), {}));
+}
+
 TEST_CASE("an inspection gives its verdict as exit status, and the same bytes each time") {
   const Folder folder;
   write_text(folder / "spec.json", sound_spec);
