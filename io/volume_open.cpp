@@ -7,6 +7,7 @@
 #include <cstring>
 #include <fstream>
 
+#include "io/dicom_file.h"
 #include "io/file_volume.h"
 #include "io/volume_formats.h"
 
@@ -25,13 +26,6 @@ bool is_tiff_name(const fs::path& path) {
   return lower_ending(path) == ".tif" || lower_ending(path) == ".tiff";
 }
 
-bool is_dicom(const fs::path& file) {
-  std::ifstream in(file, std::ios::binary);
-  char head[132] = {};
-  in.read(head, sizeof head);
-  return in.gcount() == sizeof head && std::memcmp(head + 128, "DICM", 4) == 0;
-}
-
 OpenedVolume open_folder(const fs::path& folder) {
   std::vector<fs::path> files, tiffs;
   for (const auto& entry : fs::directory_iterator(folder)) {
@@ -43,7 +37,7 @@ OpenedVolume open_folder(const fs::path& folder) {
     refuse_file(folder, "the folder is empty; give a folder of numbered TIFF slices or of one DICOM series");
   if (!tiffs.empty()) return open_tiff_folder(folder, tiffs);
   std::sort(files.begin(), files.end());
-  if (std::any_of(files.begin(), files.end(), is_dicom)) return open_dicom(folder);
+  if (std::any_of(files.begin(), files.end(), is_dicom_file)) return open_dicom(folder);
   refuse_file(folder, "holds neither TIFF slices nor a DICOM series");
 }
 
@@ -59,7 +53,7 @@ OpenedVolume open_file(const fs::path& file) {
   if (ending == ".vti") return open_vti(file);
   if (ending == ".nii" || (ending == ".gz" && lower_ending(fs::path(file).replace_extension()) == ".nii"))
     return open_nifti(file);
-  if (ending == ".dcm" || is_dicom(file))
+  if (ending == ".dcm" || is_dicom_file(file))
     return open_dicom(file.parent_path().empty() ? fs::path(".") : file.parent_path());
   if (head.find("ObjectType") != std::string::npos && head.find("NDims") != std::string::npos)
     return open_metaimage(file);
