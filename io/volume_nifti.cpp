@@ -46,8 +46,15 @@ std::string unpacked_head(const fs::path& file) {
 
 // Rotation of the quaternion form (NIfTI-1 method 2).
 void from_quaternion(const Fields& f, VolumeGeometry& g) {
-  const double b = f.at<float>(256), c = f.at<float>(260), d = f.at<float>(264),
-               a = std::sqrt(std::max(0.0, 1 - b * b - c * c - d * d));
+  double b = f.at<float>(256), c = f.at<float>(260), d = f.at<float>(264), a = 1 - b * b - c * c - d * d;
+  if (a < 1e-7) {  // half a turn: b, c and d have unit length but for rounding (nifti1.h)
+    const double norm = std::sqrt(b * b + c * c + d * d);
+    b /= norm;
+    c /= norm;
+    d /= norm;
+    a = 0;
+  }
+  a = std::sqrt(a);
   const double handed = f.at<float>(76) < 0 ? -1 : 1;
   g.direction = {
       a * a + b * b - c * c - d * d, 2 * (b * c - a * d),           handed * 2 * (b * d + a * c),
@@ -65,6 +72,19 @@ void from_affine(const Fields& f, VolumeGeometry& g) {
     for (std::size_t row = 0; row < 3; ++row) g.direction[3 * row + axis] = v[row] / length(v);
   }
   for (std::size_t row = 0; row < 3; ++row) g.origin_mm[row] = f.at<float>(280 + 16 * row + 12);
+}
+
+// Whether no corner of the volume lies further apart than a hundredth of a voxel or a thousandth of its
+// distance.
+bool is_same_place(const VolumeGeometry& a, const VolumeGeometry& b) {
+  for (int corner = 0; corner < 8; ++corner) {
+    Vec3 index;
+    for (std::size_t i = 0; i < 3; ++i)
+      index[i] = (corner >> i & 1) != 0 ? static_cast<double>(b.size[i]) : 0;
+    const Vec3 p = a.index_to_mm(index), q = b.index_to_mm(index);
+    if (!(length(p - q) < 0.01 * b.voxel_mm() + 1e-3 * length(q - b.origin_mm))) return false;
+  }
+  return true;
 }
 
 }  // namespace
@@ -90,10 +110,14 @@ OpenedVolume open_nifti(const fs::path& file) {
     geometry.spacing_mm[a] = f.at<float>(80 + 4 * a);
   }
   out.has_voxel_size = true;
-  if (f.at<std::int16_t>(252) > 0) {
-    from_quaternion(f, geometry);
-  } else if (f.at<std::int16_t>(254) > 0) {
-    from_affine(f, geometry);
+  const bool has_quaternion = f.at<std::int16_t>(252) > 0, has_affine = f.at<std::int16_t>(254) > 0;
+  if (has_quaternion) from_quaternion(f, geometry);
+  if (has_affine) {
+    // Beside a quaternion the affine form may mean another space; where it means the same, it is more exact:
+    // near half a turn the quaternion's fourth part, not stored, comes out with half of the digits.
+    VolumeGeometry affine = geometry;
+    from_affine(f, affine);
+    if (!has_quaternion || is_same_place(affine, geometry)) geometry = affine;
   }
   // NIfTI's x and y point right and forward; ours are kept as in the other formats (left, backward).
   for (std::size_t i = 0; i < 6; ++i) geometry.direction[i] = 0.0 - geometry.direction[i];

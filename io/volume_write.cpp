@@ -90,6 +90,22 @@ void for_planes(const VolumeSource& source, const RunControl& control,
   }
 }
 
+// Lines of comment that fill so many bytes or, where they are too few for one, a block of the alignment more.
+// Other readers of the format take short lines only.
+std::string comment_lines(std::size_t bytes) {
+  constexpr std::size_t line = 80;
+  const std::string comment = "Comment = ";
+  const std::size_t least = comment.size() + 2;
+  if (bytes < least) bytes += data_alignment;
+  std::string out;
+  while (bytes > 0) {
+    const std::size_t now = bytes < line + least ? bytes : line;
+    out += comment + std::string(now - comment.size() - 1, '.') + "\n";
+    bytes -= now;
+  }
+  return out;
+}
+
 std::string meta_header(const VolumeSource& source, const std::string& data_file) {
   const VolumeGeometry& g = source.geometry();
   const auto& d = g.direction;
@@ -105,9 +121,7 @@ std::string meta_header(const VolumeSource& source, const std::string& data_file
   const std::string end = std::string("ElementType = ") + meta_names[static_cast<int>(source.voxel_type())] +
                           "\nElementDataFile = " + data_file + "\n";
   if (data_file == "LOCAL") {
-    const std::string comment = "Comment = ";
-    const std::size_t used = out.str().size() + comment.size() + 1 + end.size();
-    out << comment << std::string(data_alignment - used % data_alignment, '.') << "\n";
+    out << comment_lines(data_alignment - (out.str().size() + end.size()) % data_alignment);
   }
   out << end;
   return out.str();
