@@ -53,9 +53,17 @@ double coverage_factor(const DecisionSpec& decision) {
   return 2;
 }
 
+double conformance_probability(double value, double standard_uncertainty, std::optional<double> min,
+                               std::optional<double> max) {
+  if (!(standard_uncertainty > 0)) return (!max || value <= *max) && (!min || value >= *min) ? 1 : 0;
+  const double below_max = max ? normal_distribution((*max - value) / standard_uncertainty) : 1,
+               below_min = min ? normal_distribution((*min - value) / standard_uncertainty) : 0;
+  return std::max(0.0, below_max - below_min);
+}
+
 double nonconformance_probability(double value, double standard_uncertainty, double max) {
   if (!(standard_uncertainty > 0)) return value > max ? 1 : 0;
-  return 1 - normal_distribution((max - value) / standard_uncertainty);
+  return normal_distribution((value - max) / standard_uncertainty);
 }
 
 void judge(RequirementResult& r, const DecisionSpec& decision) {

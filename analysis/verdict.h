@@ -1,6 +1,9 @@
 // Limits and decision rules: accept, reject or undecided (ISO 14253-1, JCGM 106). Never sees voxels.
 #pragma once
 
+#include <optional>
+#include <vector>
+
 #include "analysis/inspection_result.h"
 
 namespace halfmark {
@@ -19,8 +22,12 @@ Verdict overall_verdict(const std::vector<RequirementResult>& results);
 void judge_pores(std::vector<Pore>& pores, const std::vector<RequirementResult>& results,
                  const DecisionSpec& decision);
 
-// Probability that a value below `max` is stated wrongly, given a normal distribution: 1 - Phi((max - value)
-// / u).
+// Probability that the true value lies within the limits (JCGM 106:2012, clause 7), given a normal
+// distribution about the measured value: Phi((max - value) / u) - Phi((min - value) / u). A limit that is not
+// given holds always; standard_uncertainty > 0.
+double conformance_probability(double value, double standard_uncertainty, std::optional<double> min,
+                               std::optional<double> max);
+// The rest for one upper limit: 1 - Phi((max - value) / u), without loss of digits where it is small.
 double nonconformance_probability(double value, double standard_uncertainty, double max);
 
 }  // namespace halfmark
