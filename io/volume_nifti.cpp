@@ -6,6 +6,10 @@
 #include <bit>
 #include <cmath>
 #include <cstring>
+#include <memory>
+#include <type_traits>
+#include <utility>
+#include <vector>
 
 #include "io/file_volume.h"
 #include "io/volume_formats.h"
@@ -74,6 +78,33 @@ void from_affine(const Fields& f, VolumeGeometry& g) {
   for (std::size_t row = 0; row < 3; ++row) g.origin_mm[row] = f.at<float>(280 + 16 * row + 12);
 }
 
+// Grey values that the header scales, as floats.
+class ScaledVolume : public VolumeSource {
+ public:
+  ScaledVolume(std::unique_ptr<VolumeSource> stored, double slope, double intercept)
+      : stored_(std::move(stored)), slope_(slope), intercept_(intercept) {}
+  const VolumeGeometry& geometry() const override { return stored_->geometry(); }
+  VoxelType voxel_type() const override { return VoxelType::f32; }
+  void read_planes(std::int64_t z_begin, std::int64_t z_end, std::byte* out) const override {
+    const auto count = static_cast<std::size_t>(geometry().voxels_per_plane() * (z_end - z_begin));
+    std::vector<std::byte> stored(count * bytes_per_voxel(stored_->voxel_type()));
+    stored_->read_planes(z_begin, z_end, stored.data());
+    visit_voxel_type(stored_->voxel_type(), [&](auto* t) {
+      using T = std::remove_pointer_t<decltype(t)>;
+      for (std::size_t i = 0; i < count; ++i) {
+        T value;
+        std::memcpy(&value, stored.data() + i * sizeof value, sizeof value);
+        const auto grey = static_cast<float>(slope_ * static_cast<double>(value) + intercept_);
+        std::memcpy(out + i * sizeof grey, &grey, sizeof grey);
+      }
+    });
+  }
+
+ private:
+  std::unique_ptr<VolumeSource> stored_;
+  double slope_, intercept_;
+};
+
 // Whether no corner of the volume lies further apart than a hundredth of a voxel or a thousandth of its
 // distance.
 bool is_same_place(const VolumeGeometry& a, const VolumeGeometry& b) {
@@ -100,8 +131,10 @@ OpenedVolume open_nifti(const fs::path& file) {
   if (std::memcmp(head.data() + 344, "n+1", 3) != 0)
     refuse_file(file, "only single-file NIfTI-1 (.nii) is read, not header and image apart");
   const auto dims = f.at<std::int16_t>(40);
-  if (dims < 3 || dims > 7 || (dims > 3 && f.at<std::int16_t>(48) > 1))
-    refuse_file(file, "needs three dimensions");
+  bool deeper = false;
+  for (std::int16_t d = 4; d <= dims && d <= 7; ++d)
+    deeper = deeper || f.at<std::int16_t>(40 + 2 * static_cast<std::size_t>(d)) > 1;
+  if (dims < 3 || dims > 7 || deeper) refuse_file(file, "needs three dimensions");
   OpenedVolume out;
   out.format = "NIfTI";
   VolumeGeometry geometry;
@@ -157,6 +190,12 @@ OpenedVolume open_nifti(const fs::path& file) {
   out.source = packed
                    ? inflate_volume(file, 0, geometry, type, big_endian, static_cast<std::uint64_t>(offset))
                    : map_volume(file, static_cast<std::uint64_t>(offset), geometry, type, big_endian);
+  const float slope = f.at<float>(112), intercept = f.at<float>(116);
+  if (slope != 0 && (slope != 1 || intercept != 0)) {  // a slope of 0 means none
+    if (!std::isfinite(slope) || !std::isfinite(intercept))
+      refuse_file(file, "its slope or intercept is not finite; the header is damaged");
+    out.source = std::make_unique<ScaledVolume>(std::move(out.source), slope, intercept);
+  }
   out.data_files.push_back(file);
   return out;
 }

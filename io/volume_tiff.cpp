@@ -17,6 +17,10 @@ namespace fs = std::filesystem;
 
 namespace {
 
+// Packed pictures grow by no more than this (deflate by 1032, LZW by about 2700, others by somewhat more);
+// what promises more is damaged, and is refused before memory is asked for.
+constexpr std::uint64_t largest_expansion = 1 << 16;
+
 struct Close {
   void operator()(TIFF* file) const { TIFFClose(file); }
 };
@@ -80,15 +84,25 @@ Page page_of(TIFF* tiff, const fs::path& file) {
 }
 
 // Strips must lie within the file: a truncated one is told at once, not in the middle of an inspection.
-void check_strips(TIFF* tiff, std::uintmax_t file_size, const fs::path& file, std::int64_t page) {
+void check_strips(TIFF* tiff, const Page& picture, std::uintmax_t file_size, const fs::path& file,
+                  std::int64_t page) {
   const std::uint32_t strips = TIFFIsTiled(tiff) != 0 ? TIFFNumberOfTiles(tiff) : TIFFNumberOfStrips(tiff);
+  std::uint64_t held = 0;
   for (std::uint32_t s = 0; s < strips; ++s) {
     const std::uint64_t offset = TIFFGetStrileOffset(tiff, s), count = TIFFGetStrileByteCount(tiff, s);
     if (offset == 0 || count == 0 || offset > file_size || count > file_size - offset) {
       refuse_file(
           file, "page " + std::to_string(page) + " promises more data than the file holds; it is truncated");
     }
+    held += count;
   }
+  std::uint16_t compression = COMPRESSION_NONE;
+  TIFFGetFieldDefaulted(tiff, TIFFTAG_COMPRESSION, &compression);
+  const std::uint64_t voxels = std::uint64_t{picture.width} * picture.height * bytes_per_voxel(picture.type);
+  if (voxels / (compression == COMPRESSION_NONE ? 1 : largest_expansion) > held)
+    refuse_file(file, "page " + std::to_string(page) + " promises a picture of " +
+                          std::to_string(picture.width) + " x " + std::to_string(picture.height) +
+                          ", far more than its data can hold");
 }
 
 // libtiff takes a directory whose link to the next one is cut off for the last one: the file's own end tells.
@@ -216,7 +230,7 @@ OpenedVolume open_tiff(const fs::path& file) {
       refuse_file(file, "page " + std::to_string(number) +
                             " differs in size or voxel type from the first; all must agree");
     check_directory(handle.get(), size, file, number);
-    check_strips(handle.get(), size, file, number);
+    check_strips(handle.get(), page, size, file, number);
     slices.push_back({file, TIFFCurrentDirOffset(handle.get())});
     last_message.clear();
     if (TIFFLastDirectory(handle.get()) != 0) break;
@@ -246,7 +260,7 @@ OpenedVolume open_tiff_folder(const fs::path& folder, std::vector<fs::path> file
                             " x " + std::to_string(page.height) + " against " + std::to_string(first.width) +
                             " x " + std::to_string(first.height) + "); all must agree");
     }
-    check_strips(handle.get(), fs::file_size(file), file, 0);
+    check_strips(handle.get(), page, fs::file_size(file), file, 0);
     slices.push_back({file, 0});
   }
   out.source = std::make_unique<TiffVolume>(std::move(slices), first);

@@ -288,6 +288,24 @@ TEST_CASE("big-endian files of each format are read as ITK reads them") {
   }
 }
 
+TEST_CASE("grey values that a NIfTI header scales are read as ITK reads them") {
+  const Folder folder;
+  for (const VoxelType type : {VoxelType::u8, VoxelType::i16}) {
+    write_volume(random_volume(type, 3, Turn::quarter), folder / "s.nii");
+    std::string bytes = file_bytes(folder / "s.nii");
+    const float slope = -0.75f, intercept = 12.5f;
+    std::memcpy(bytes.data() + 112, &slope, 4);
+    std::memcpy(bytes.data() + 116, &intercept, 4);
+    std::ofstream(folder / "s.nii", std::ios::binary) << bytes;
+    auto reader = itk::ImageFileReader<itk::Image<float, 3>>::New();
+    reader->SetImageIO(itk::NiftiImageIO::New());
+    reader->SetFileName((folder / "s.nii").string());
+    reader->Update();
+    check_same(*open_volume(folder / "s.nii").source, from_itk<float>(reader->GetOutput(), VoxelType::f32),
+               float_places);
+  }
+}
+
 TEST_CASE("TIFF pages agree with ITK both ways") {
   const Folder folder;
   for (const VoxelType type : all_types) {
@@ -362,6 +380,37 @@ TEST_CASE("VTK image data agrees with VTK both ways") {
       check_same(of_vtk, truth, 1e-9);
     }
   }
+}
+
+TEST_CASE("no flipped byte of packed VTK image data goes unnoticed") {
+  const Folder folder;
+  const MemoryVolume truth = random_volume(VoxelType::u16, 2, Turn::none);
+  vtkNew<vtkImageData> image;
+  image->SetDimensions(static_cast<int>(truth.geometry().size[0]), static_cast<int>(truth.geometry().size[1]),
+                       static_cast<int>(truth.geometry().size[2]));
+  image->AllocateScalars(VTK_UNSIGNED_SHORT, 1);
+  std::memcpy(image->GetScalarPointer(), truth.resident(), bytes_of(truth).size());
+  vtkNew<vtkXMLImageDataWriter> writer;
+  writer->SetInputData(image);
+  writer->SetFileName((folder / "p.vti").c_str());
+  writer->SetDataModeToAppended();
+  writer->EncodeAppendedDataOff();
+  writer->Write();
+  const std::string whole = file_bytes(folder / "p.vti");
+  const std::size_t data = whole.find("<AppendedData") + 30, end = whole.find("</AppendedData>");
+  int unnoticed = 0, flips = 0;
+  for (std::size_t at = data; at < end; at += 3, ++flips) {
+    std::string bytes = whole;
+    bytes[at] = static_cast<char>(bytes[at] ^ 0x10);
+    std::ofstream(folder / "p.vti", std::ios::binary) << bytes;
+    try {
+      unnoticed += bytes_of(*open_volume(folder / "p.vti").source) == bytes_of(truth) ? 0 : 1;
+    } catch (const Problem&) {
+    }
+  }
+  INFO(unnoticed << " of " << flips << " flips");
+  CHECK(flips > 50);
+  CHECK(unnoticed == 0);
 }
 
 TEST_CASE("a DICOM series is read as ITK reads it, plain and compressed") {

@@ -186,6 +186,41 @@ TEST_CASE("headers that lie are told so") {
   CHECK(problem_of(folder / "x.xyz").find("no format") != std::string::npos);
 }
 
+TEST_CASE("a piece of image data that is larger than the whole is refused before it takes memory") {
+  const Folder folder;
+  write_volume(sample(VoxelType::u16), folder / "p.vti");
+  std::string bytes = bytes_of(folder / "p.vti");
+  const std::string piece = "<Piece Extent=\"0 4";
+  const std::size_t at = bytes.find(piece);
+  REQUIRE(at != std::string::npos);
+  write_bytes(folder / "p.vti", bytes.replace(at, piece.size(), "<Piece Extent=\"0 1000000000"));
+  CHECK(problem_of(folder / "p.vti").find("within the whole") != std::string::npos);
+}
+
+TEST_CASE("a packed TIFF that promises far more than its bytes can hold is refused") {
+  const Folder folder;
+  const auto number = [](std::uint32_t v, int bytes) {
+    std::string out;
+    for (int i = 0; i < bytes; ++i) out += static_cast<char>((v >> (8 * i)) & 255);
+    return out;
+  };
+  const auto picture = [&](std::uint32_t edge) {
+    std::string out = "II*" + std::string(1, '\0') + number(8, 4);
+    for (int page = 0; page < 2; ++page) {
+      const std::uint32_t entries[][3] = {{256, 4, edge}, {257, 4, edge}, {258, 3, 8},
+                                          {259, 3, 8},    {262, 3, 1},    {273, 4, 0},
+                                          {277, 3, 1},    {278, 4, edge}, {279, 4, 4}};
+      out += number(9, 2);
+      for (const auto& [tag, type, value] : entries)
+        out += number(tag, 2) + number(type, 2) + number(1, 4) + number(value == 0 ? 8 : value, 4);
+      out += number(page == 0 ? static_cast<std::uint32_t>(out.size()) + 4 : 0, 4);
+    }
+    return out;
+  };
+  write_bytes(folder / "b.tif", picture(1 << 20));
+  CHECK(problem_of(folder / "b.tif").find("far more than") != std::string::npos);
+}
+
 TEST_CASE("every truncation of every format is refused or read whole, never worse") {
   const Folder folder;
   for (const std::string name : {"t.mha", "t.nrrd", "t.nii", "t.nii.gz", "t.tif", "t.vti"}) {
