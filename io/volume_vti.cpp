@@ -25,6 +25,7 @@
 #include "io/file_volume.h"
 #include "io/memory_volume.h"
 #include "io/volume_formats.h"
+#include "io/vti_blocks.h"
 
 namespace halfmark {
 namespace fs = std::filesystem;
@@ -158,6 +159,7 @@ OpenedVolume open_vti(const fs::path& file) {
   // there.
   if (static_cast<std::uint64_t>(geometry.voxel_count()) / 1040 > fs::file_size(file))
     refuse_file(file, "the header promises more voxels than the file can hold");
+  check_packed_blocks(file, head, geometry.voxel_count());
   try {
     reader->Update();
   } catch (const std::exception&) {  // std::bad_alloc, std::length_error from sizes within the data

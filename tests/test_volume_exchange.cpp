@@ -408,6 +408,17 @@ TEST_CASE("no flipped byte of packed VTK image data goes unnoticed") {
     } catch (const Problem&) {
     }
   }
+  // Blocks that claim 4 GiB each, in the header's second number.
+  std::string huge = whole;
+  huge.replace(whole.find('_', whole.find("<AppendedData")) + 5, 4, "\xf0\xff\xff\xff");
+  std::ofstream(folder / "p.vti", std::ios::binary) << huge;
+  try {
+    open_volume(folder / "p.vti");
+    CHECK(false);
+  } catch (const Problem& problem) {
+    INFO(problem.what());
+    CHECK(std::string(problem.what()).find("claim more than") != std::string::npos);
+  }
   INFO(unnoticed << " of " << flips << " flips");
   CHECK(flips > 50);
   CHECK(unnoticed == 0);
