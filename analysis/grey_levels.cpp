@@ -30,6 +30,14 @@ constexpr double block_mean_noise = 0.3;
 // Beyond this many noises a voxel of a thousand is no accident.
 constexpr double noise_tail = 4.5;
 constexpr double assumed_blur_voxel = 0.8;
+constexpr double voxel_width =
+    0.28867513459481287;  // standard deviation of a voxel's own averaging, 1 / sqrt(12)
+// Blocks this far off any edge tell a level better than the mode does.
+constexpr std::int64_t least_clear = 2;
+// Material this many edge widths off its faces shows its level: 2 (1 - Phi(2.5)) = 1.2 % are lost at the
+// block's rim.
+constexpr double plateau_widths = 2.5;
+constexpr double lost_worth_a_word = 0.02;
 // How low the mode of a thin material may lie (5 voxels across: 8 % at a blur of 1, 19 % at 1.5), as a
 // standard uncertainty.
 constexpr double thin_material_share = 0.1;
@@ -118,8 +126,8 @@ void find_other_phases(const VolumeSource& source, const SampleWindows& windows,
 // A mode leans towards the partial volumes between the phases when it is broad; the mean of blocks off any
 // edge does not.
 double refined_level(double mode, const NoiseEstimate& blocks, double first_noise) {
-  const bool sound =
-      blocks.large_blocks && std::abs(blocks.level - mode) < std::max(blocks.deviation, first_noise);
+  const bool sound = blocks.clear_voxels >= least_clear &&
+                     std::abs(blocks.level - mode) < std::max(blocks.deviation, first_noise);
   return sound ? blocks.level : mode;
 }
 
@@ -133,7 +141,7 @@ void measure_noise(const VolumeSource& source, const SampleWindows& windows, con
                      out.material + std::max(tail, highest_material * out.contrast()));
   const NoiseEstimate air =
       estimate_noise(source, windows, field, -inf, std::max(out.threshold, out.air + tail));
-  out.material_plateau = material.large_blocks;
+  out.material_clear_voxels = material.clear_voxels;
   if (!given.air) out.air = refined_level(out.air, air, first_noise);
   if (!given.material) out.material = refined_level(out.material, material, first_noise);
   out.threshold = 0.5 * (out.air + out.material);
@@ -155,14 +163,19 @@ void measure_noise(const VolumeSource& source, const SampleWindows& windows, con
 // uncertainty of the level; 0: nothing changed.
 double correct_by_walls(const VolumeSource& source, const SampleWindows& windows, const FieldOfView& field,
                         const GreySpec& given, GreyLevels& out) {
-  if (out.material_plateau || given.material) return 0;
+  // What the faces on both sides take off the level in the middle of blocks so far off them.
+  const double width = std::hypot(out.blur_voxel, voxel_width);
+  const double off = (static_cast<double>(out.material_clear_voxels) + 0.5) / width;
+  if (off > plateau_widths || given.material) return 0;
   const ThinWallLevel walls = estimate_thin_walls(
       source, windows, field, {out.air, out.material, std::max(out.material_noise, out.air_noise)});
+  const double lost = std::min(thin_material_share, std::erfc(off / std::sqrt(2.0)));
+  if (walls.walls == 0 && lost < lost_worth_a_word) return lost * out.contrast();
   if (walls.walls == 0) {
     out.warnings.emplace_back(
         "the material is nowhere thick enough to show its own grey level, and no sound wall tells it: the "
         "level may lie a tenth of the contrast too low; give grey_levels.material in the spec");
-    return thin_material_share * out.contrast();
+    return lost * out.contrast();
   }
   out.material = walls.material;
   out.threshold = 0.5 * (out.air + out.material);

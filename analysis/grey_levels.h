@@ -35,7 +35,7 @@ struct GreyLevels {
   std::string source = "auto";                // "auto", "spec" or "spec, auto" (one of the two levels given)
   std::vector<double> other_peaks;            // further modes (a third material ...)
   bool air_seen = true, material_seen = true;
-  bool material_plateau = true;  // some material is thick enough to show its level clear of any edge
+  std::int64_t material_clear_voxels = 0;  // that the blocks its noise is taken from lie off any edge
   Histogram histogram;
   std::vector<std::string> warnings;  // what looks wrong, in plain words
 

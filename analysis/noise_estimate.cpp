@@ -185,7 +185,7 @@ NoiseEstimate estimate_noise(const VolumeSource& source, const SampleWindows& wi
     const double variance = median(variances) / std::pow(1 - 2 / (9 * freedom), 3);
     out.deviation = std::sqrt(variance);
     out.level = median(means);
-    out.large_blocks = clear >= 3;
+    out.clear_voxels = clear;
     out.blocks = static_cast<std::int64_t>(variances.size());
     for (std::size_t a = 0; a < 3 && variance > 0; ++a)
       out.correlation[a] = std::clamp(middle_mean(lags[a]) / variance, -1.0, 1.0);

@@ -3,6 +3,7 @@
 #pragma once
 
 #include <array>
+#include <cstdint>
 
 #include "analysis/field_of_view.h"
 #include "analysis/grey_levels.h"
@@ -14,8 +15,8 @@ struct NoiseEstimate {
   double deviation = 0;                        // grey values
   std::array<double, 3> correlation{0, 0, 0};  // lag 1 along x, y, z
   double level = 0;                            // median of the blocks' means, grey values
-  bool large_blocks = false;  // wide blocks well off any edge: `level` is free of partial volume
-  std::int64_t blocks = 0;    // homogeneous blocks used; 0: nothing found
+  std::int64_t clear_voxels = 0;               // that the blocks lie off any edge
+  std::int64_t blocks = 0;                     // homogeneous blocks used; 0: nothing found
 };
 
 // Blocks whose surroundings lie wholly above `low` and below `high`.
