@@ -286,7 +286,8 @@ void write_volume(const VolumeSource& source, const fs::path& path, const RunCon
     set.write(path, header);
     write_plain(source, "", set.temporary_for(data), data, control);
   };
-  const fs::path raw = fs::path(path).replace_extension(".raw");
+  // One data file a header: two headers of one name must not share it.
+  const fs::path raw = path.string() + ".raw";
   if (ending == ".mha") {
     write_plain(source, meta_header(source, "LOCAL"), set.temporary_for(path), path, control);
   } else if (ending == ".mhd") {

@@ -117,6 +117,16 @@ void write_labels(const InspectionRun& run, const VolumeGeometry& geometry, cons
 
 }  // namespace
 
+void remove_stale_extras(const fs::path& folder, const std::set<std::string>& names) {
+  for (const auto& [name, file] : {std::pair{"surface", "surface.stl"},
+                                   {"thickness", "thickness.vtp"},
+                                   {"pores", "pores.vtp"},
+                                   {"labels", "labels.mha"}}) {
+    std::error_code ignored;
+    if (names.count(name) == 0) fs::remove(folder / file, ignored);
+  }
+}
+
 void check_extra_names(const std::set<std::string>& names) {
   static const std::set<std::string> known{"surface", "thickness", "pores", "labels"};
   for (const std::string& name : names)

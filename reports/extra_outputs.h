@@ -12,6 +12,9 @@ namespace halfmark {
 
 // Throws Problem(usage) for a name that is none of surface, thickness, pores, labels.
 void check_extra_names(const std::set<std::string>& names);
+// Takes away the extra files of an earlier run into this folder that the present run does not write: they
+// would stand beside the report of another part.
+void remove_stale_extras(const std::filesystem::path& folder, const std::set<std::string>& names);
 // Each into a temporary of `outputs`. Throws Problem: cannot_create, io_error, bad_data (nothing to write: no
 // walls were measured, more labels than the format holds).
 void write_extras(const InspectionRun& run, const VolumeGeometry& geometry,

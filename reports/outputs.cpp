@@ -51,6 +51,7 @@ void write_outputs(const InspectionRun& run, const VolumeSource& volume, const f
   write_extras(run, volume.geometry(), folder, options.write, outputs, control);
   control.throw_if_cancelled();
   outputs.commit();
+  remove_stale_extras(folder, options.write);
   control.step("report", 1);
 }
 
