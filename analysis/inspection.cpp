@@ -165,23 +165,30 @@ void add_all(std::vector<T>& to, const std::vector<T>& from) {
 
 }  // namespace
 
-InspectionRun inspect(const OpenedVolume& volume, const InspectionSpec& spec, const InspectOptions& options,
+InspectionRun inspect(const OpenedVolume& volume, const InspectionSpec& asked, const InspectOptions& options,
                       const RunControl& control) {
   std::optional<tbb::global_control> threads;
   if (options.threads > 0)
     threads.emplace(tbb::global_control::max_allowed_parallelism, static_cast<std::size_t>(options.threads));
   const VolumeSource& source = *volume.source;
   const VolumeGeometry& geometry = source.geometry();
+  if (!volume.has_voxel_size) {
+    throw Problem(
+        ExitStatus::bad_data,
+        "the volume tells no voxel size, without which nothing can be measured; give it with --voxel-size "
+        "(mm)");
+  }
   InspectionRun run;
   Inspection& out = run.inspection;
+  InspectionSpec spec = asked;
+  // Who limits inclusions wants them searched for.
+  spec.pores.inclusions = spec.pores.inclusions ||
+                          any_of_quantity(spec, {Quantity::inclusion_diameter, Quantity::inclusion_count});
   out.spec = spec;
   out.serial = options.serial;
 
   run.field = in_step("field of view", [&] { return find_field_of_view(source, control); });
   out.volume = describe_volume(volume, run.field, options);
-  if (!volume.has_voxel_size) {
-    out.warnings.emplace_back("the volume tells no voxel size: 1 mm is assumed; give it with --voxel-size");
-  }
   out.grey_levels =
       in_step("grey levels", [&] { return find_grey_levels(source, run.field, spec.grey_levels, control); });
   const PartOptions part_options{spec.pores.open_closing_radius_mm, spec.pores.open_min_depth_mm,

@@ -25,10 +25,11 @@ struct Evidence {
 struct RequirementResult {
   Requirement requirement;
   std::string unit;
-  bool has_value = false;  // false: nothing to measure (then `reason` says why)
+  bool has_value = false;          // false: nothing to measure (then `reason` says why)
   bool met_without_value = false;  // nothing was found that could break the limit; `reason` says so
   bool lower_bound = false;        // the value can only be larger (a pore cut by the field)
-  Measured measured;       // in `unit`
+  bool beyond_the_scan = false;    // the limit lies below what this scan can show; a warning says so
+  Measured measured;               // in `unit`
   double expanded_uncertainty = 0;
   double coverage_factor = 2;
   Verdict verdict = Verdict::undecided;

@@ -19,7 +19,13 @@ double count_uncertainty(const RequirementContext& c) {
   return 0.5 * near;
 }
 
+bool searched_for_inclusions(const RequirementContext& c) {
+  return c.spec.pores.inclusions && c.spec.pores.method == PoreMethod::local;
+}
+
 void count(RequirementContext& c, double per) {
+  if (c.requirement.quantity == Quantity::inclusion_count && !searched_for_inclusions(c))
+    return c.none("inclusions are not searched for by pores.method iso50", false);
   c.set(static_cast<double>(c.pores.size()) / per,
         {{"pores near the size limit", count_uncertainty(c) / per}});
   c.result.evidence.what =
@@ -51,8 +57,10 @@ void measure_diameter(RequirementContext& c) {
   const Pore* p = extreme(
       c, [](const Pore& q) { return q.equivalent_diameter_mm; }, true);
   if (p == nullptr)
-    return c.none(inclusions ? "no inclusion was found in the zone" : "no pore was found in the zone",
-                  !inclusions || c.spec.pores.inclusions);
+    return c.none(!inclusions                  ? "no pore was found in the zone"
+                  : searched_for_inclusions(c) ? "no inclusion was found in the zone"
+                                               : "inclusions are not searched for by pores.method iso50",
+                  !inclusions || searched_for_inclusions(c));
   c.set(p->equivalent_diameter_mm, {{"volume", p->diameter_standard_uncertainty_mm}});
   c.result.lower_bound = c.any_cut();
   c.point_at(*p, inclusions ? "inclusion" : "pore");

@@ -59,6 +59,7 @@ void warn(RequirementContext& c) {
     }
   }
   if (limit > 0 && smallest > limit) {
+    c.result.beyond_the_scan = true;
     c.result.warnings.push_back(number_text(
         "the limit of %.3g mm lies below what blur and noise let this scan show (about %.3g mm, an "
         "estimate): the requirement cannot be proved by it",

@@ -34,9 +34,18 @@ std::string with_unit(double value, const std::string& unit) {
   return number(value) + (unit.empty() ? "" : " " + unit);
 }
 
+// Two digits of the uncertainty, the value to the same place.
 std::string stated(const RequirementResult& r) {
-  return number(r.measured.value) + " ± " + with_unit(r.expanded_uncertainty, r.unit);
+  const double u = r.expanded_uncertainty;
+  if (!(u > 0)) return with_unit(r.measured.value, r.unit);
+  const int decimals = std::clamp(1 - static_cast<int>(std::floor(std::log10(u))), 0, 12);
+  char text[120];
+  std::snprintf(text, sizeof text, "%.*f ± %.*f", decimals, r.measured.value, decimals, u);
+  return text + (r.unit.empty() ? "" : " " + r.unit);
 }
+
+constexpr const char* beyond_words =
+    ", but blur and noise hide pores as small as the limit in this scan: that there is none is not shown";
 
 struct Sides {
   bool met, broken;
@@ -70,7 +79,8 @@ void judge(RequirementResult& r, const DecisionSpec& decision) {
   r.coverage_factor = coverage_factor(decision);
   r.expanded_uncertainty = r.coverage_factor * r.measured.standard_uncertainty;
   if (!r.has_value) {
-    r.verdict = r.met_without_value ? Verdict::accept : Verdict::undecided;
+    r.verdict = r.met_without_value && !r.beyond_the_scan ? Verdict::accept : Verdict::undecided;
+    if (r.met_without_value && r.beyond_the_scan) r.reason += beyond_words;
     return;
   }
   const double guard = decision.rule == DecisionRule::guarded ? r.expanded_uncertainty : 0;
@@ -96,7 +106,9 @@ void judge(RequirementResult& r, const DecisionSpec& decision) {
     look(r.measured.value - *r.requirement.min, *r.requirement.min, "least permitted value");
   // A value that can only grow proves nothing against a largest permitted value.
   const bool unproved = met && r.lower_bound && r.requirement.max.has_value();
-  r.verdict = broken ? Verdict::reject : met && !unproved ? Verdict::accept : Verdict::undecided;
+  r.verdict = broken                                   ? Verdict::reject
+              : met && !unproved && !r.beyond_the_scan ? Verdict::accept
+                                                       : Verdict::undecided;
   const std::string subject =
       (r.evidence.what.empty() ? std::string("measured") : r.evidence.what) + ": " + stated(r);
   if (broken) {
@@ -107,7 +119,8 @@ void judge(RequirementResult& r, const DecisionSpec& decision) {
                     ? ", but walls are measured up to wall_thickness.max_mm only and may be thicker"
                     : ", but a pore is cut by the field of view and may be larger");
   } else if (met) {
-    r.reason = subject + " keeps the " + side + " of " + with_unit(limit, r.unit);
+    r.reason = subject + " keeps the " + side + " of " + with_unit(limit, r.unit) +
+               (r.beyond_the_scan ? beyond_words : "");
   } else {
     r.reason = subject + " lies too near the " + side + " of " + with_unit(limit, r.unit) +
                " to decide with this uncertainty";

@@ -320,6 +320,12 @@ class SpecReader {
       out.percentile = object.number_above("percentile", 1, 0, false);
       if (*out.percentile >= 100) object.problem("percentile", "must lie between 0 and 100");
     }
+    if (out.quantity == Quantity::wall_thickness && out.max && !out.min && !out.percentile) {
+      object.problem(
+          "max",
+          "needs a percentile beside it: without one the least wall is measured; for \"no wall thicker "
+          "than\" give e.g. \"percentile\": 99");
+    }
     const bool local = out.quantity == Quantity::local_porosity;
     if (only_for("reference", local, "local_porosity")) {
       JsonObject reference(object.raw("reference"), object.place_of("reference"), problems_);

@@ -87,7 +87,7 @@ std::string limit_words(const RequirementResult& result) {
 }
 
 std::string value_words(const RequirementResult& result) {
-  if (!result.has_value) return "not measured";
+  if (!result.has_value) return result.met_without_value ? "none found" : "not measured";
   return measured_text(result.measured.value, result.expanded_uncertainty, result.unit);
 }
 
@@ -118,10 +118,10 @@ std::string pore_words(const Inspection& inspection) {
   add(s.closed, "closed");
   add(s.open, "open");
   add(s.cut_by_field, "cut by the field of view");
-  add(s.in_between, "of in-between grey");
   add(s.diffuse, "diffuse");
   std::string words = counted(s.count, "pore", "pores");
   if (!kinds.empty()) words += ": " + joined(kinds, ", ");
+  if (s.in_between > 0) words += "; " + counted(s.in_between, "region", "regions") + " of in-between grey";
   if (s.inclusions > 0) words += "; " + counted(s.inclusions, "inclusion", "inclusions");
   words += "; porosity " + measured_text(s.porosity_percent.value,
                                          inspection.spec.decision.coverage_factor.value_or(2) *

@@ -197,6 +197,10 @@ TEST_CASE("pores are counted by their centres") {
   Scene scene = some_pores();
   CHECK(scene.measure(Quantity::pore_count).measured.value == 5);  // 1, 2, 3, 4, 8
   CHECK(scene.measure(Quantity::pore_count).measured.standard_uncertainty == 0);
+  // Not searched for is not the same as none.
+  CHECK_FALSE(scene.measure(Quantity::inclusion_count).has_value);
+  CHECK_FALSE(scene.measure(Quantity::inclusion_count).met_without_value);
+  scene.spec.pores.inclusions = true;
   CHECK(scene.measure(Quantity::inclusion_count).measured.value == 1);
   scene.add_box("left", {0, 0, 0}, {12, 44, 40});  // holds the centre of pore 1 only
   const RequirementResult left = scene.measure(Quantity::pore_count, "left");
@@ -224,6 +228,7 @@ TEST_CASE("pores within U of the size limit make the count's uncertainty") {
   CHECK(found.measured.standard_uncertainty == Approx(0.5));  // pore 3 is farther
   scene.pore(2).disposition = "a bore";
   CHECK(scene.measure(r).measured.standard_uncertainty == 0);
+  scene.spec.pores.inclusions = true;
   r.quantity = Quantity::inclusion_count;
   r.ignore_below_mm = d2 - 0.05;
   CHECK(scene.measure(r).measured.value == 1);

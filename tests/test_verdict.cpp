@@ -125,3 +125,24 @@ TEST_CASE("the whole is reject if any is, else undecided if any is, else accept"
   CHECK(whole({Verdict::undecided, Verdict::reject, Verdict::accept}) == Verdict::reject);
   CHECK(whole({}) == Verdict::undecided);
 }
+
+TEST_CASE("a limit below what the scan shows is never called met") {
+  RequirementResult r;
+  r.requirement.max = 0.1;
+  r.unit = "mm";
+  r.has_value = true;
+  r.measured.value = 0.05;
+  r.beyond_the_scan = true;
+  judge(r, {});
+  CHECK(r.verdict == Verdict::undecided);
+  r.measured.value = 0.2;
+  judge(r, {});
+  CHECK(r.verdict == Verdict::reject);
+  r.has_value = false;
+  r.met_without_value = true;
+  judge(r, {});
+  CHECK(r.verdict == Verdict::undecided);
+  r.beyond_the_scan = false;
+  judge(r, {});
+  CHECK(r.verdict == Verdict::accept);
+}
