@@ -1,14 +1,14 @@
 #include "analysis/blur_estimate.h"
 
-#include <Eigen/Cholesky>
-#include <Eigen/Core>
 #include <algorithm>
 #include <cmath>
 #include <optional>
 #include <type_traits>
 #include <vector>
 
+#include "analysis/curve_fit.h"
 #include "analysis/edge_places.h"
+#include "analysis/normal_distribution.h"
 
 namespace halfmark {
 
@@ -29,61 +29,26 @@ struct Sample {
 
 // g(t) = low + (high - low) Phi((t - t0 - a u - b v - c (u^2 + v^2) / 2) / s); parameters low, high, t0, a,
 // b, c, s.
-using Parameters = Eigen::Matrix<double, 7, 1>;
-
-std::optional<Parameters> fit_edge(const std::vector<Sample>& samples, const EdgeLevels& levels,
-                                   double& residual) {
-  Parameters p;
-  p << levels.air, levels.material, 0, 0, 0, 0, 1.0;
-  double damping = 1e-3;
-  const auto cost_of = [&](const Parameters& q) {
-    double sum = 0;
-    for (const Sample& s : samples) {
-      const double z = (s.t - q[2] - q[3] * s.u - q[4] * s.v - 0.5 * q[5] * (s.u * s.u + s.v * s.v)) / q[6];
-      const double r = s.grey - (q[0] + (q[1] - q[0]) * 0.5 * std::erfc(-z * M_SQRT1_2));
-      sum += r * r;
-    }
-    return sum;
+std::optional<CurveFit<7>> fit_edge(const std::vector<Sample>& samples, const EdgeLevels& levels) {
+  Parameters<7> start;
+  start << levels.air, levels.material, 0, 0, 0, 0, 1.0;
+  const auto z_of = [](const Sample& s, const Parameters<7>& p) {
+    return (s.t - p[2] - p[3] * s.u - p[4] * s.v - 0.5 * p[5] * (s.u * s.u + s.v * s.v)) / p[6];
   };
-  double cost = cost_of(p);
-  for (int iteration = 0; iteration < 12; ++iteration) {
-    Eigen::Matrix<double, 7, 7> normal = Eigen::Matrix<double, 7, 7>::Zero();
-    Parameters gradient = Parameters::Zero();
-    for (const Sample& s : samples) {
-      const double q = s.u * s.u + s.v * s.v;
-      const double z = (s.t - p[2] - p[3] * s.u - p[4] * s.v - 0.5 * p[5] * q) / p[6];
-      const double phi = 0.5 * std::erfc(-z * M_SQRT1_2),
-                   density = 0.3989422804014327 * std::exp(-0.5 * z * z);
-      const double slope = (p[1] - p[0]) * density / p[6];
-      Parameters j;
-      j << 1 - phi, phi, -slope, -slope * s.u, -slope * s.v, -0.5 * slope * q, -slope * z;
-      const double r = s.grey - (p[0] + (p[1] - p[0]) * phi);
-      normal.noalias() += j * j.transpose();
-      gradient += r * j;
-    }
-    bool better = false;
-    for (int attempt = 0; attempt < 6 && !better; ++attempt) {
-      Eigen::Matrix<double, 7, 7> damped = normal;
-      damped.diagonal() *= 1 + damping;
-      Parameters next = p + damped.ldlt().solve(gradient);
-      next[6] = std::clamp(next[6], 0.2, 5.0);
-      const double next_cost = cost_of(next);
-      better = next_cost < cost;
-      if (better) {
-        const bool settled = cost - next_cost < 1e-7 * cost;
-        p = next;
-        cost = next_cost;
-        damping *= 0.2;
-        if (settled) iteration = 99;
-      } else {
-        damping *= 8;
-      }
-    }
-    if (!better) break;
-  }
-  residual = std::sqrt(cost / static_cast<double>(samples.size() - 7));
-  if (!p.allFinite()) return std::nullopt;
-  return p;
+  const auto value = [&](const Sample& s, const Parameters<7>& p) {
+    return p[0] + (p[1] - p[0]) * normal_distribution(z_of(s, p));
+  };
+  const auto linearised = [&](const Sample& s, const Parameters<7>& p) {
+    const double q = s.u * s.u + s.v * s.v, z = z_of(s, p), phi = normal_distribution(z);
+    const double slope = (p[1] - p[0]) * normal_density(z) / p[6];
+    Linearised<7> at{p[0] + (p[1] - p[0]) * phi, {}};
+    at.slope << 1 - phi, phi, -slope, -slope * s.u, -slope * s.v, -0.5 * slope * q, -slope * z;
+    return at;
+  };
+  const auto fit = fit_curve<7>(samples, start, value, linearised,
+                                [](Parameters<7>& p) { p[6] = std::clamp(p[6], 0.2, 5.0); });
+  if (!fit.p.allFinite()) return std::nullopt;
+  return fit;
 }
 
 template <class View>
@@ -105,17 +70,18 @@ std::optional<double> blur_variance_at(const View& view, const Edge& e, const Ve
     }
   }
   if (samples.size() < 40) return std::nullopt;
-  double residual = 0;
-  const auto p = fit_edge(samples, levels, residual);
+  const auto fit = fit_edge(samples, levels);
+  if (!fit) return std::nullopt;
+  const Parameters<7>& p = fit->p;
   const double contrast = levels.material - levels.air;
-  if (!p || std::abs((*p)[0] - levels.air) > plateau_slack * contrast ||
-      std::abs((*p)[1] - levels.material) > plateau_slack * contrast)
+  if (std::abs(p[0] - levels.air) > plateau_slack * contrast ||
+      std::abs(p[1] - levels.material) > plateau_slack * contrast)
     return std::nullopt;
-  if (std::abs((*p)[2]) > 2 || std::abs((*p)[5]) > most_curvature || (*p)[6] > 4) return std::nullopt;
-  if (residual > 1.3 * levels.noise + 0.02 * contrast) return std::nullopt;
+  if (std::abs(p[2]) > 2 || std::abs(p[5]) > most_curvature || p[6] > 4) return std::nullopt;
+  if (fit->residual(samples.size()) > 1.3 * levels.noise + 0.02 * contrast) return std::nullopt;
   double averaging = 0;
   for (std::size_t a = 0; a < 3; ++a) averaging += n[a] * n[a] * scale[a] * scale[a] / 12;
-  return (*p)[6] * (*p)[6] - averaging;
+  return p[6] * p[6] - averaging;
 }
 
 }  // namespace
@@ -138,12 +104,7 @@ BlurEstimate estimate_blur(const VolumeSource& source, const SampleWindows& wind
       const std::size_t tries = std::min(edges.size(), most);
       for (std::size_t i = 0; i < tries; ++i) {
         const Edge& e = edges[i * edges.size() / tries];
-        if (!field.whole() && !(contains(field.rows, e.x - reach, e.y - reach, e.z) &&
-                                contains(field.rows, e.x + reach, e.y + reach, e.z) &&
-                                contains(field.rows, e.x - reach, e.y + reach, e.z) &&
-                                contains(field.rows, e.x + reach, e.y - reach, e.z))) {
-          continue;
-        }
+        if (!field.whole() && !cube_in_field(field, e.x, e.y, e.z, reach)) continue;
         if (const auto variance = blur_variance_at(view, e, scale, levels, samples))
           variances.push_back(*variance);
       }

@@ -60,8 +60,6 @@ void batch_calipers(const float* x, const float* y, const float* z, std::size_t 
   std::memcpy(out, &calipers, sizeof calipers);
 }
 
-Vec3 unit(const Vec3& v) { return (1 / length(v)) * v; }
-
 // One half of the geodesic grid: of each pair of opposite points the one that comes first along z, y, x.
 Grid make_grid() {
   const double g = std::numbers::phi;
@@ -170,13 +168,6 @@ class Hull {
   std::span<const Vec3> points_;
   std::vector<float> x_, y_, z_;  // from the first point
 };
-
-// Two unit vectors across a unit vector and across each other.
-std::pair<Vec3, Vec3> across(const Vec3& axis) {
-  const Vec3 helper = std::abs(axis[0]) < 0.7 ? Vec3{1, 0, 0} : Vec3{0, 1, 0};
-  const Vec3 u = unit(cross(axis, helper));
-  return {u, cross(axis, u)};
-}
 
 // The `starts` axes with the largest value.
 std::vector<Vec3> best_axes(std::vector<float> value) {

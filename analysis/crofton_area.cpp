@@ -18,8 +18,6 @@ using Polygon = std::vector<Vec3>;  // corners on the plane that touches the uni
 // 50 is 88.9 degrees.
 constexpr double first_square = 50;
 
-Vec3 unit(const Vec3& v) { return (1 / length(v)) * v; }
-
 // The part of the polygon where dot(corner, normal) >= 0.
 Polygon clipped(const Polygon& polygon, const Vec3& normal) {
   Polygon out;
@@ -43,8 +41,8 @@ double solid_angle(const Vec3& a, const Vec3& b, const Vec3& c) {
 
 // Solid angle of the directions nearer to `centre` than to any of `others` (unit vectors).
 double cell_area(const Vec3& centre, const std::vector<Vec3>& others) {
-  const Vec3 helper = std::abs(centre[0]) < 0.7 ? Vec3{1, 0, 0} : Vec3{0, 1, 0};
-  const Vec3 u = first_square * unit(cross(centre, helper)), v = cross(centre, u);
+  const auto [across_u, across_v] = across(centre);
+  const Vec3 u = first_square * across_u, v = first_square * across_v;
   Polygon polygon{centre + u + v, centre - u + v, centre - u - v, centre + u - v};
   for (const Vec3& other : others) {
     const Vec3 normal = centre - other;

@@ -20,7 +20,7 @@ class DeficitCells {
 
   // Adds the core's voxels that are clear of the outer face. Blocks may be added at the same time.
   void add(const DeficitBlock& block, const VoxelBox& core);
-  // Takes voxels out again: runs of one row with their fractions; clear[i]: the voxel had been added.
+  // Takes a voxel out again that had been added with this fraction.
   void take_out(std::int64_t x, std::int64_t y, std::int64_t z, std::int16_t fraction);
   // Leaves the cells within `reach` cells of a voxel out altogether.
   void blank(std::int64_t x, std::int64_t y, std::int64_t z, std::int64_t reach);

@@ -1,6 +1,9 @@
 #include "analysis/diffuse_porosity.h"
 
 #include <algorithm>
+#include <iterator>
+
+#include "analysis/quantiles.h"
 
 namespace halfmark {
 
@@ -25,20 +28,11 @@ constexpr double weak_deficit = 0.2;
 constexpr double same_around = 0.6, some_around = 0.25;
 constexpr double most_held = 0.7;
 
-// From the 10 % and 30 % points of a normal distribution: regions of lowered grey are on the other side.
 double scatter_of(const std::vector<float>& means) {
   std::vector<float> known;
-  for (const float m : means) {
-    if (m > DeficitCells::not_enough) known.push_back(m);
-  }
-  if (known.size() < least_means) return 0;
-  const auto point = [&](double share) {
-    auto at = known.begin() + static_cast<std::ptrdiff_t>(share * static_cast<double>(known.size() - 1));
-    std::nth_element(known.begin(), at, known.end());
-    return static_cast<double>(*at);
-  };
-  const double low = point(0.1), middle = point(0.3);
-  return (middle - low) / (1.2816 - 0.5244);
+  std::copy_if(means.begin(), means.end(), std::back_inserter(known),
+               [](float m) { return m > DeficitCells::not_enough; });
+  return known.size() < least_means ? 0 : lower_side_deviation(known);
 }
 
 std::array<std::int64_t, 3> centre_of(const PoreSums& s) {

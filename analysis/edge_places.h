@@ -68,13 +68,9 @@ struct LocalFrame {
 };
 
 inline LocalFrame frame_along(const Vec3& gradient) {
-  LocalFrame out;
-  out.n = (1 / length(gradient)) * gradient;
-  const Vec3 helper = std::abs(out.n[0]) < 0.6 ? Vec3{1, 0, 0} : Vec3{0, 1, 0};
-  out.u = cross(out.n, helper);
-  out.u = (1 / length(out.u)) * out.u;
-  out.v = cross(out.n, out.u);
-  return out;
+  const Vec3 n = unit(gradient);
+  const auto [u, v] = across(n);
+  return {n, u, v};
 }
 
 }  // namespace halfmark

@@ -280,4 +280,15 @@ FieldOfView whole_field(const VolumeGeometry& geometry) {
   return field;
 }
 
+bool cube_in_field(const FieldOfView& field, std::int64_t x, std::int64_t y, std::int64_t z,
+                   std::int64_t margin) {
+  for (const std::int64_t cz : {z - margin, z + margin}) {
+    for (const std::int64_t cy : {y - margin, y + margin}) {
+      if (!contains(field.rows, x - margin, cy, cz) || !contains(field.rows, x + margin, cy, cz))
+        return false;
+    }
+  }
+  return true;
+}
+
 }  // namespace halfmark

@@ -23,4 +23,9 @@ FieldOfView find_field_of_view(const VolumeSource& source, const RunControl& con
 // The whole volume, without looking.
 FieldOfView whole_field(const VolumeGeometry& geometry);
 
+// All corners of the cube from the voxel less `margin` to the voxel plus `margin` lie in the field, whose
+// planes are convex.
+bool cube_in_field(const FieldOfView& field, std::int64_t x, std::int64_t y, std::int64_t z,
+                   std::int64_t margin);
+
 }  // namespace halfmark

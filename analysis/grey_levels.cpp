@@ -8,12 +8,12 @@
 
 #include <algorithm>
 #include <cmath>
-#include <cstdio>
 
 #include "analysis/blur_estimate.h"
 #include "analysis/grey_modes.h"
 #include "analysis/histogram.h"
 #include "analysis/noise_estimate.h"
+#include "analysis/number_text.h"
 #include "analysis/sample_windows.h"
 #include "analysis/thin_wall_level.h"
 
@@ -53,12 +53,6 @@ constexpr double highest_material = 0.2;
 // peak).
 constexpr double mode_scatter = 0.05;
 
-std::string text(const char* format, double a, double b = 0) {
-  char out[240];
-  std::snprintf(out, sizeof out, format, a, b);
-  return out;
-}
-
 bool is_constant(const Histogram& h) {
   return std::count_if(h.counts.begin(), h.counts.end(), [](std::int64_t c) { return c > 0; }) < 2;
 }
@@ -78,11 +72,11 @@ void choose_modes(const HistogramShape& shape, double noise, const GreySpec& giv
     if (modes.empty())
       refuse("no peak stands out in the histogram; give grey_levels.air and .material in the spec");
     if (modes.size() == 1 && !given.air && !given.material) {
-      refuse(
-          text("only one phase is seen, at grey %.5g (noise %.3g): air and material cannot be told apart; "
-               "check that the volume "
-               "holds the part and air, or give grey_levels in the spec",
-               modes[0].grey, noise));
+      refuse(sentence(
+          "only one phase is seen, at grey %.5g (noise %.3g): air and material cannot be told apart; "
+          "check that the volume "
+          "holds the part and air, or give grey_levels in the spec",
+          modes[0].grey, noise));
     }
     if (!given.air) out.air = modes.front().grey;
     if (!given.material) {
@@ -91,21 +85,21 @@ void choose_modes(const HistogramShape& shape, double noise, const GreySpec& giv
         if (mode.grey > out.air + noise && (best == nullptr || mode.mass > best->mass)) best = &mode;
       }
       if (best == nullptr)
-        refuse(
-            text("no peak lies above the air level of %.5g; give grey_levels.material in the spec", out.air));
+        refuse(sentence("no peak lies above the air level of %.5g; give grey_levels.material in the spec",
+                        out.air));
       out.material = best->grey;
     }
   }
   if (!(out.material > out.air))
-    refuse(
-        text("the material level %.5g does not lie above the air level %.5g; check grey_levels in the spec",
-             out.material, out.air));
+    refuse(sentence(
+        "the material level %.5g does not lie above the air level %.5g; check grey_levels in the spec",
+        out.material, out.air));
   if (out.source != "spec" && out.material - out.air < least_separation * noise) {
     refuse(
-        text("the two peaks at %.5g and %.5g lie closer than three times the noise: they cannot be told "
-             "apart; scan with less noise "
-             "or give grey_levels in the spec",
-             out.air, out.material));
+        sentence("the two peaks at %.5g and %.5g lie closer than three times the noise: they cannot be told "
+                 "apart; scan with less noise "
+                 "or give grey_levels in the spec",
+                 out.air, out.material));
   }
 }
 
@@ -200,24 +194,24 @@ void measure_blur(const VolumeSource& source, const SampleWindows& windows, cons
 void say_what_looks_wrong(const HistogramShape& shape, GreyLevels& out) {
   if (shape.clipped_low > clipped_share_worth_a_word) {
     out.warnings.push_back(
-        text("%.3g %% of the voxels have the least grey value the file can hold: dark values are clipped",
-             100 * shape.clipped_low));
+        sentence("%.3g %% of the voxels have the least grey value the file can hold: dark values are clipped",
+                 100 * shape.clipped_low));
   }
   if (shape.clipped_high > clipped_share_worth_a_word) {
-    out.warnings.push_back(text(
+    out.warnings.push_back(sentence(
         "%.3g %% of the voxels have the greatest grey value the file can hold: bright values are clipped",
         100 * shape.clipped_high));
   }
   if (!out.other_peaks.empty()) {
     std::string peaks;
-    for (const double peak : out.other_peaks) peaks += (peaks.empty() ? "" : ", ") + text("%.5g", peak);
+    for (const double peak : out.other_peaks) peaks += (peaks.empty() ? "" : ", ") + sentence("%.5g", peak);
     out.warnings.push_back("more than two phases: further histogram peaks at grey " + peaks +
                            "; check that the levels are those of air and of the part's material");
   }
   if (out.contrast_to_noise < 5) {
     out.warnings.push_back(
-        text("contrast-to-noise is only %.2g: single voxels cross the threshold by noise alone",
-             out.contrast_to_noise));
+        sentence("contrast-to-noise is only %.2g: single voxels cross the threshold by noise alone",
+                 out.contrast_to_noise));
   }
 }
 
@@ -249,8 +243,8 @@ GreyLevels find_grey_levels(const VolumeSource& source, const FieldOfView& field
   measure_blur(source, windows, field, out);
   const double level_uncertainty = correct_by_walls(source, windows, field, given, out);
   if (!out.blur_measured) {
-    out.warnings.push_back(
-        text("no sound edge was found to measure the blur on; %.2g voxel is assumed", assumed_blur_voxel));
+    out.warnings.push_back(sentence("no sound edge was found to measure the blur on; %.2g voxel is assumed",
+                                    assumed_blur_voxel));
   }
   out.threshold_standard_uncertainty =
       std::hypot(0.5 * mode_scatter * std::hypot(out.air_noise, out.material_noise) + 0.001 * out.contrast(),

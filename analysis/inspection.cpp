@@ -61,7 +61,6 @@ VolumeText describe_volume(const OpenedVolume& volume, const FieldOfView& field,
   text.sha256 = options.volume_sha256;
   text.voxel_type = name_of(volume.source->voxel_type());
   text.geometry = volume.source->geometry();
-  text.voxel_size_known = volume.has_voxel_size;
   text.scan = volume.scan;
   text.field_share = static_cast<double>(field.voxels) / static_cast<double>(text.geometry.voxel_count());
   return text;

@@ -41,7 +41,6 @@ struct RequirementResult {
 struct VolumeText {
   std::string file, format, sha256, voxel_type;
   VolumeGeometry geometry;
-  bool voxel_size_known = true;
   std::map<std::string, std::string> scan;
   double field_share = 1;  // share of voxels inside the field of view
 };

@@ -104,18 +104,6 @@ double middle_mean(std::vector<double> values) {
   return sum / static_cast<double>(values.size() - 2 * cut);
 }
 
-// All corners of the cube lie in the field, whose planes are convex.
-bool box_in_field(const FieldOfView& field, std::int64_t x, std::int64_t y, std::int64_t z,
-                  std::int64_t margin) {
-  for (const std::int64_t cz : {z - margin, z + margin}) {
-    for (const std::int64_t cy : {y - margin, y + margin}) {
-      if (!contains(field.rows, x - margin, cy, cz) || !contains(field.rows, x + margin, cy, cz))
-        return false;
-    }
-  }
-  return true;
-}
-
 // Calls f(view, x, y, z) at places on a regular grid that lie in the field with a margin.
 template <class F>
 void for_places(const VolumeSource& source, const SampleWindows& windows, const FieldOfView& field,
@@ -132,7 +120,7 @@ void for_places(const VolumeSource& source, const SampleWindows& windows, const 
       for (std::int64_t z = window.z_begin + margin; z + margin < window.z_end; z += step) {
         for (std::int64_t y = margin; y + margin < size[1]; y += step) {
           for (std::int64_t x = margin; x + margin < size[0]; x += step) {
-            if (box_in_field(field, x, y, z, margin)) f(view, x, y, z);
+            if (cube_in_field(field, x, y, z, margin)) f(view, x, y, z);
           }
         }
       }

@@ -187,9 +187,9 @@ RunMask rolled_over(const RunMask& material, const FieldOfView& field, const Par
 }
 
 std::int64_t overlap_of(const LabelRun& run, std::span<const Run> row) {
+  const auto ends_behind = [](std::int32_t x, const Run& r) { return x < r.end; };
   std::int64_t sum = 0;
-  for (auto r = std::upper_bound(row.begin(), row.end(), run.begin,
-                                 [](std::int32_t x, const Run&other) { return x < other.end; });
+  for (auto r = std::upper_bound(row.begin(), row.end(), run.begin, ends_behind);
        r != row.end() && r->begin < run.end; ++r)
     sum += std::min(run.end, r->end) - std::max(run.begin, r->begin);
   return sum;

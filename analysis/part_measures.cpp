@@ -62,7 +62,7 @@ void measure_wall(RequirementContext& c) {
   if (c.requirement.percentile) {
     c.set(wall_percentile(*c.measured.outer_surface, *c.measured.walls, in_zone, *c.requirement.percentile),
           {{"wall", c.measured.walls->standard_uncertainty_mm}});
-    c.result.evidence.what = number_text("wall, %.4g %% percentile", *c.requirement.percentile);
+    c.result.evidence.what = sentence("wall, %.4g %% percentile", *c.requirement.percentile);
   } else {
     c.set(summary.least_mm.value, {{"wall", summary.least_mm.standard_uncertainty}});
     c.result.evidence.what = "thinnest wall";
@@ -71,8 +71,8 @@ void measure_wall(RequirementContext& c) {
   c.result.evidence.extent_mm = summary.least_mm.value;
   if (c.result.measured.value >= c.spec.walls.max_mm) {
     c.result.lower_bound = true;
-    c.result.warnings.push_back(number_text(
-        "walls are measured up to %.4g mm: this one is that thick or thicker", c.spec.walls.max_mm));
+    c.result.warnings.push_back(
+        sentence("walls are measured up to %.4g mm: this one is that thick or thicker", c.spec.walls.max_mm));
   }
 }
 

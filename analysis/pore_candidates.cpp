@@ -7,6 +7,7 @@
 #include <cmath>
 
 #include "analysis/block_pass.h"
+#include "analysis/quantiles.h"
 
 namespace halfmark {
 
@@ -175,16 +176,7 @@ double measure_noise(const VolumeSource& source, const GreyDeficit& deficit, con
     if (samples.size() > 20000) break;
   }
   if (samples.size() < 100) return 0;
-  const auto at = [&](double share) {
-    auto place =
-        samples.begin() + static_cast<std::ptrdiff_t>(share * static_cast<double>(samples.size() - 1));
-    std::nth_element(samples.begin(), place, samples.end());
-    return static_cast<double>(*place);
-  };
-  // The mode is nearer to a low quantile than to the median where pores are many: from two lower quantiles of
-  // a normal distribution, -1.2816 at 10 % and -0.5244 at 30 %.
-  const double low = at(0.1), mid = at(0.3);
-  return (mid - low) / (1.2816 - 0.5244);
+  return lower_side_deviation(samples);
 }
 
 }  // namespace

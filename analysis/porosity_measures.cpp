@@ -19,7 +19,7 @@ constexpr std::int64_t few_pores = 10;
 void say_what_is_not_in_it(RequirementContext& c, std::int64_t pores) {
   const double smallest = c.measured.smallest_expected_diameter_mm;
   if (pores >= few_pores || !(smallest > 0)) return;
-  c.result.warnings.push_back(number_text(
+  c.result.warnings.push_back(sentence(
       "pores below about %.3g mm cannot be seen in this scan: they are neither in this figure nor in its "
       "uncertainty",
       smallest));
@@ -69,7 +69,7 @@ void measure_section_porosity(RequirementContext& c) {
   if (worst) {
     const double at = m.geometry.index_to_mm(worst->index)[static_cast<std::size_t>(worst->axis)];
     what = std::string(c.requirement.window_mm ? "window in section " : "section ") + "xyz"[worst->axis] +
-           number_text(" = %.4g mm", at);
+           sentence(" = %.4g mm", at);
   }
   moving(c, worst, "no window of that size lies in the zone with at least 80 % part", what);
 }

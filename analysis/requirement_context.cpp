@@ -6,12 +6,6 @@
 
 namespace halfmark {
 
-std::string number_text(const char* format, double a, double b) {
-  char out[200];
-  std::snprintf(out, sizeof out, format, a, b);
-  return out;
-}
-
 bool is_void(const Pore& pore) {
   return pore.kind != PoreKind::inclusion && pore.kind != PoreKind::in_between;
 }

@@ -11,6 +11,7 @@
 #include <string>
 #include <vector>
 
+#include "analysis/number_text.h"
 #include "analysis/requirement_measures.h"
 #include "analysis/zone_sums.h"
 
@@ -18,9 +19,6 @@ namespace halfmark {
 
 // A caliper between two sides that are each placed to about a quarter of a voxel: a first estimate.
 constexpr double caliper_voxels = 0.35;
-
-// printf with up to two numbers.
-std::string number_text(const char* format, double a, double b = 0);
 
 // Neither inclusion nor in-between grey.
 bool is_void(const Pore& pore);

@@ -52,7 +52,7 @@ void warn(RequirementContext& c) {
       c.requirement.quantity == Quantity::pore_spacing || c.requirement.quantity == Quantity::pore_depth) {
     limit = c.requirement.ignore_below_mm.value_or(0);
     if (!c.requirement.ignore_below_mm && smallest > 0) {
-      c.result.warnings.push_back(number_text(
+      c.result.warnings.push_back(sentence(
           "without ignore_below_mm every pore counts, but pores below about %.3g mm cannot be seen in "
           "this scan",
           smallest));
@@ -60,10 +60,10 @@ void warn(RequirementContext& c) {
   }
   if (limit > 0 && smallest > limit) {
     c.result.beyond_the_scan = true;
-    c.result.warnings.push_back(number_text(
-        "the limit of %.3g mm lies below what blur and noise let this scan show (about %.3g mm, an "
-        "estimate): the requirement cannot be proved by it",
-        limit, smallest));
+    c.result.warnings.push_back(
+        sentence("the limit of %.3g mm lies below what blur and noise let this scan show (about %.3g mm, an "
+                 "estimate): the requirement cannot be proved by it",
+                 limit, smallest));
   }
   if (c.any_cut() && c.requirement.quantity != Quantity::wall_thickness &&
       c.requirement.quantity != Quantity::material_volume &&

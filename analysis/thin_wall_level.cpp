@@ -1,17 +1,17 @@
 #include "analysis/thin_wall_level.h"
 
-#include <Eigen/Cholesky>
-#include <Eigen/Core>
 #include <algorithm>
 #include <array>
 #include <cmath>
-#include <numbers>
 #include <optional>
 #include <type_traits>
 #include <utility>
 #include <vector>
 
+#include "analysis/curve_fit.h"
 #include "analysis/edge_places.h"
+#include "analysis/normal_distribution.h"
+#include "analysis/quantiles.h"
 
 namespace halfmark {
 
@@ -37,78 +37,40 @@ struct Sample {
   double t, u, v, grey;
 };
 
-// level, place of the near face, its tilt along u and v, edge width, thickness.
-using Parameters = Eigen::Matrix<double, 6, 1>;
-using Matrix = Eigen::Matrix<double, 6, 6>;
-
-struct Modelled {
-  double value;
-  Parameters slope;
-};
-
-double step_of(double z) { return 0.5 * std::erfc(-z * std::numbers::sqrt2 / 2); }
-double bell_of(double z) { return std::exp(-0.5 * z * z) / std::sqrt(2 * std::numbers::pi); }
-
-Modelled model_at(const Sample& s, const Parameters& p, double air) {
+// Parameters: level, place of the near face, its tilt along u and v, edge width, thickness.
+Linearised<6> model_at(const Sample& s, const Parameters<6>& p, double air) {
   const double near = (s.t - p[1] - p[2] * s.u - p[3] * s.v) / p[4], far = near - p[5] / p[4];
-  const double share = step_of(near) - step_of(far), bell_near = bell_of(near), bell_far = bell_of(far);
+  const double share = normal_distribution(near) - normal_distribution(far), bell_near = normal_density(near),
+               bell_far = normal_density(far);
   const double height = p[0] - air, along = -height * (bell_near - bell_far) / p[4];
-  Modelled out{air + height * share, {}};
+  Linearised<6> out{air + height * share, {}};
   out.slope << share, along, along * s.u, along * s.v, -height * (bell_near * near - bell_far * far) / p[4],
       height * bell_far / p[4];
   return out;
 }
 
 struct WallFit {
-  Parameters p;
+  Parameters<6> p;
   double residual = 0, level_uncertainty = 0;
 };
 
 std::optional<WallFit> fit_wall(const std::vector<Sample>& samples, const EdgeLevels& levels,
                                 double thickness) {
-  Parameters p;
-  p << levels.material, 0, 0, 0, 1.0, thickness;
-  const auto cost_of = [&](const Parameters& q) {
-    double sum = 0;
-    for (const Sample& s : samples) {
-      const double r = s.grey - model_at(s, q, levels.air).value;
-      sum += r * r;
-    }
-    return sum;
-  };
-  double cost = cost_of(p), damping = 1e-3;
-  Matrix normal;
-  for (int iteration = 0; iteration < 25; ++iteration) {
-    normal.setZero();
-    Parameters gradient = Parameters::Zero();
-    for (const Sample& s : samples) {
-      const Modelled m = model_at(s, p, levels.air);
-      normal.noalias() += m.slope * m.slope.transpose();
-      gradient += (s.grey - m.value) * m.slope;
-    }
-    bool better = false, settled = false;
-    for (int attempt = 0; attempt < 6 && !better; ++attempt) {
-      Matrix damped = normal;
-      damped.diagonal() *= 1 + damping;
-      Parameters next = p + damped.ldlt().solve(gradient);
-      next[4] = std::clamp(next[4], 0.25, 5.0);
-      next[5] = std::clamp(next[5], 0.5, thickest_voxels + 2);
-      const double next_cost = cost_of(next);
-      better = next_cost < cost;
-      if (better) {
-        settled = cost - next_cost < 1e-8 * cost;
-        p = next;
-        cost = next_cost;
-        damping *= 0.2;
-      } else {
-        damping *= 8;
-      }
-    }
-    if (!better || settled) break;
-  }
-  if (!p.allFinite()) return std::nullopt;
-  WallFit out{p, std::sqrt(cost / static_cast<double>(samples.size() - 6)), 0};
-  const Matrix covariance = normal.ldlt().solve(Matrix::Identity());
+  Parameters<6> start;
+  start << levels.material, 0, 0, 0, 1.0, thickness;
+  const auto fit = fit_curve<6>(
+      samples, start,
+      [&](const Sample& s, const Parameters<6>& p) { return model_at(s, p, levels.air).value; },
+      [&](const Sample& s, const Parameters<6>& p) { return model_at(s, p, levels.air); },
+      [](Parameters<6>& p) {
+        p[4] = std::clamp(p[4], 0.25, 5.0);
+        p[5] = std::clamp(p[5], 0.5, thickest_voxels + 2);
+      },
+      {25, 1e-8});
+  if (!fit.p.allFinite()) return std::nullopt;
+  WallFit out{fit.p, fit.residual(samples.size()), 0};
+  const Eigen::Matrix<double, 6, 6> covariance =
+      fit.normal.ldlt().solve(Eigen::Matrix<double, 6, 6>::Identity());
   out.level_uncertainty = out.residual * std::sqrt(std::max(covariance(0, 0), 0.0));
   return out;
 }
@@ -195,15 +157,8 @@ bool is_sound(const WallFit& fit, const EdgeLevels& levels) {
          fit.p[0] > levels.air + 0.6 * contrast && fit.p[0] < levels.air + 2 * contrast;
 }
 
-double quantile(std::vector<double> values, double share) {
-  const auto at =
-      values.begin() + static_cast<std::ptrdiff_t>(share * static_cast<double>(values.size() - 1));
-  std::nth_element(values.begin(), at, values.end());
-  return *at;
-}
-
 // The median's standard uncertainty from half the interquartile range.
-double median_uncertainty(const std::vector<double>& values) {
+double median_uncertainty(std::vector<double>& values) {
   return (quantile(values, 0.75) - quantile(values, 0.25)) / 1.349 * 1.253 /
          std::sqrt(static_cast<double>(values.size()));
 }

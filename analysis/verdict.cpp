@@ -2,46 +2,28 @@
 
 #include <algorithm>
 #include <cmath>
-#include <cstdio>
-#include <numbers>
+
+#include "analysis/normal_distribution.h"
+#include "analysis/number_text.h"
 
 namespace halfmark {
 
 namespace {
-
-double normal_distribution(double z) { return 0.5 * std::erfc(-z / std::numbers::sqrt2); }
 
 // Newton's method on the normal distribution; a start near the middle of its steep part converges for 0.5 < p
 // < 1.
 double normal_quantile(double p) {
   double z = 0;
   for (int i = 0; i < 100; ++i) {
-    const double density = std::exp(-0.5 * z * z) / std::sqrt(2 * std::numbers::pi);
-    const double step = (normal_distribution(z) - p) / density;
+    const double step = (normal_distribution(z) - p) / normal_density(z);
     z -= std::clamp(step, -1.0, 1.0);
     if (std::abs(step) < 1e-14) break;
   }
   return z;
 }
 
-std::string number(double value) {
-  char text[40];
-  std::snprintf(text, sizeof text, "%.4g", value);
-  return text;
-}
-
 std::string with_unit(double value, const std::string& unit) {
-  return number(value) + (unit.empty() ? "" : " " + unit);
-}
-
-// Two digits of the uncertainty, the value to the same place.
-std::string stated(const RequirementResult& r) {
-  const double u = r.expanded_uncertainty;
-  if (!(u > 0)) return with_unit(r.measured.value, r.unit);
-  const int decimals = std::clamp(1 - static_cast<int>(std::floor(std::log10(u))), 0, 12);
-  char text[120];
-  std::snprintf(text, sizeof text, "%.*f ± %.*f", decimals, r.measured.value, decimals, u);
-  return text + (r.unit.empty() ? "" : " " + r.unit);
+  return number_text(value) + (unit.empty() ? "" : " " + unit);
 }
 
 constexpr const char* beyond_words =
@@ -109,8 +91,8 @@ void judge(RequirementResult& r, const DecisionSpec& decision) {
   r.verdict = broken                                   ? Verdict::reject
               : met && !unproved && !r.beyond_the_scan ? Verdict::accept
                                                        : Verdict::undecided;
-  const std::string subject =
-      (r.evidence.what.empty() ? std::string("measured") : r.evidence.what) + ": " + stated(r);
+  const std::string subject = (r.evidence.what.empty() ? std::string("measured") : r.evidence.what) + ": " +
+                              measured_text(r.measured.value, r.expanded_uncertainty, r.unit);
   if (broken) {
     r.reason = subject + " breaks the " + side + " of " + with_unit(limit, r.unit);
   } else if (unproved) {

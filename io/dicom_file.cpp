@@ -248,8 +248,6 @@ int short_or(const Parser& parser, Tag tag, int otherwise) {
   return static_cast<unsigned char>(text[0]) | (static_cast<unsigned char>(text[1]) << 8);
 }
 
-Vec3 unit(const Vec3& v) { return (1 / length(v)) * v; }
-
 void read_picture(const Parser& parser, DicomFile& out) {
   const std::string kind = parser.text(photometric);
   if (short_or(parser, samples, 1) != 1 || kind.rfind("MONOCHROME", 0) != 0)

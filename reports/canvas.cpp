@@ -7,8 +7,8 @@
 #include <cmath>
 #include <mutex>
 
+#include "analysis/number_text.h"
 #include "io/problem.h"
-#include "reports/number_text.h"
 
 namespace halfmark {
 

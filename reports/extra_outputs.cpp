@@ -17,6 +17,12 @@ namespace fs = std::filesystem;
 
 namespace {
 
+// What --write names, and the file it becomes.
+const std::map<std::string, const char*> files{{"surface", "surface.stl"},
+                                               {"thickness", "thickness.vtp"},
+                                               {"pores", "pores.vtp"},
+                                               {"labels", "labels.mha"}};
+
 // Whole numbers up to this are exact in 32-bit floats.
 constexpr std::int32_t most_float_label = 1 << 24;
 
@@ -118,36 +124,33 @@ void write_labels(const InspectionRun& run, const VolumeGeometry& geometry, cons
 }  // namespace
 
 void remove_stale_extras(const fs::path& folder, const std::set<std::string>& names) {
-  for (const auto& [name, file] : {std::pair{"surface", "surface.stl"},
-                                   {"thickness", "thickness.vtp"},
-                                   {"pores", "pores.vtp"},
-                                   {"labels", "labels.mha"}}) {
+  for (const auto& [name, file] : files) {
     std::error_code ignored;
     if (names.count(name) == 0) fs::remove(folder / file, ignored);
   }
 }
 
 void check_extra_names(const std::set<std::string>& names) {
-  static const std::set<std::string> known{"surface", "thickness", "pores", "labels"};
-  for (const std::string& name : names)
-    if (!known.count(name))
+  for (const std::string& name : names) {
+    if (files.count(name) == 0)
       throw Problem(ExitStatus::usage,
                     "--write " + name + ": is not known; choose of surface, thickness, pores, labels");
+  }
 }
 
 void write_extras(const InspectionRun& run, const VolumeGeometry& geometry, const fs::path& folder,
                   const std::set<std::string>& names, OutputSet& outputs, const RunControl& control) {
-  const auto write = [&](const char* name, const char* file, auto&& writer) {
+  const auto write = [&](const char* name, auto&& writer) {
     if (!names.count(name)) return;
     control.throw_if_cancelled();
-    const fs::path final_name = folder / file, temporary = outputs.temporary_for(final_name);
+    const fs::path final_name = folder / files.at(name), temporary = outputs.temporary_for(final_name);
     writer(temporary);
     check_written(temporary, final_name);
   };
-  write("surface", "surface.stl", [&](const fs::path& path) { write_stl(run.surface, path); });
-  write("thickness", "thickness.vtp", [&](const fs::path& path) { write_thickness(run, path); });
-  write("pores", "pores.vtp", [&](const fs::path& path) { write_pores(run, geometry, path, control); });
-  write("labels", "labels.mha", [&](const fs::path& path) { write_labels(run, geometry, path, control); });
+  write("surface", [&](const fs::path& path) { write_stl(run.surface, path); });
+  write("thickness", [&](const fs::path& path) { write_thickness(run, path); });
+  write("pores", [&](const fs::path& path) { write_pores(run, geometry, path, control); });
+  write("labels", [&](const fs::path& path) { write_labels(run, geometry, path, control); });
 }
 
 }  // namespace halfmark

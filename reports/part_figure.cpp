@@ -3,8 +3,8 @@
 #include <algorithm>
 #include <cmath>
 
+#include "analysis/number_text.h"
 #include "reports/canvas.h"
-#include "reports/number_text.h"
 #include "reports/pore_mesh.h"
 #include "reports/scene_render.h"
 

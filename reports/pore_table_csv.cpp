@@ -5,7 +5,7 @@
 #include <charconv>
 #include <cmath>
 
-#include "reports/number_text.h"
+#include "analysis/number_text.h"
 
 namespace halfmark {
 

@@ -59,7 +59,6 @@ VolumeText read_volume(const JsonPlace& place) {
   const std::vector<double> direction = place.at("direction").numbers();
   if (direction.size() != 9) place.at("direction").fail("should be nine numbers");
   std::copy(direction.begin(), direction.end(), v.geometry.direction.begin());
-  v.voxel_size_known = place.at("voxel_size_known").flag();
   v.field_share = place.at("field_share").number();
   v.scan = text_map(place.at("scan"));
   return v;

@@ -3,7 +3,7 @@
 #include <algorithm>
 #include <cmath>
 
-#include "reports/number_text.h"
+#include "analysis/number_text.h"
 #include "reports/program_text.h"
 #include "reports/report_method.h"
 #include "reports/requirement_text.h"

@@ -3,8 +3,8 @@
 #include <QByteArray>
 #include <QString>
 
+#include "analysis/number_text.h"
 #include "reports/colours.h"
-#include "reports/number_text.h"
 
 namespace halfmark {
 

@@ -4,8 +4,8 @@
 #include <chrono>
 #include <ctime>
 
+#include "analysis/number_text.h"
 #include "reports/json_value.h"
-#include "reports/number_text.h"
 #include "reports/pore_columns.h"
 #include "reports/program_text.h"
 
@@ -31,7 +31,6 @@ Json volume_json(const VolumeText& v) {
   json["sha256"] = v.sha256;
   json["size"] = Json::array({g.size[0], g.size[1], g.size[2]});
   json["voxel_mm"] = to_json(g.spacing_mm);
-  json["voxel_size_known"] = v.voxel_size_known;
   json["origin_mm"] = to_json(g.origin_mm);
   json["direction"] = g.direction;
   json["voxel_type"] = v.voxel_type;

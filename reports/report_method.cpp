@@ -3,7 +3,7 @@
 #include <algorithm>
 #include <cmath>
 
-#include "reports/number_text.h"
+#include "analysis/number_text.h"
 #include "reports/program_text.h"
 
 namespace halfmark {
@@ -32,7 +32,7 @@ FactsBlock volume_facts(const Inspection& in) {
   facts.facts.emplace_back("Voxel size",
                            times({number_text(g.spacing_mm[0], 5), number_text(g.spacing_mm[1], 5),
                                   number_text(g.spacing_mm[2], 5)}) +
-                               " mm" + (v.voxel_size_known ? "" : ", assumed: the file tells none"));
+                               " mm");
   facts.facts.emplace_back("Field of view", number_text(100 * v.field_share, 3) + " % of the volume");
   for (const auto& [key, value] : v.scan)
     facts.facts.emplace_back("Scan: " + plain_name(key), one_line(value));

@@ -4,8 +4,8 @@
 #include <QPageSize>
 #include <algorithm>
 
+#include "analysis/number_text.h"
 #include "reports/canvas.h"
-#include "reports/number_text.h"
 #include "reports/page_flow.h"
 
 namespace halfmark {

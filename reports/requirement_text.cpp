@@ -4,7 +4,7 @@
 #include <cmath>
 #include <limits>
 
-#include "reports/number_text.h"
+#include "analysis/number_text.h"
 
 namespace halfmark {
 

@@ -4,9 +4,9 @@
 #include <cmath>
 #include <map>
 
+#include "analysis/number_text.h"
 #include "reports/canvas.h"
 #include "reports/contour.h"
-#include "reports/number_text.h"
 #include "reports/slice_plan.h"
 
 namespace halfmark {

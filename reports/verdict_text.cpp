@@ -3,7 +3,7 @@
 #include <algorithm>
 #include <array>
 
-#include "reports/number_text.h"
+#include "analysis/number_text.h"
 #include "reports/requirement_text.h"
 
 namespace halfmark {

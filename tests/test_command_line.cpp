@@ -18,6 +18,7 @@
 #include <thread>
 
 #include "tests/support/catch.h"
+#include "tests/support/temporary_folder.h"
 
 namespace fs = std::filesystem;
 
@@ -40,24 +41,12 @@ Outcome run_shell(const std::string& command) {
   return out;
 }
 
-Outcome halfmark(const std::string& arguments) {
+Outcome run_halfmark(const std::string& arguments) {
   return run_shell(std::string("'") + HALFMARK_BINARY + "' " + arguments);
 }
 
-class Folder {
- public:
-  Folder()
-      : path_(fs::temp_directory_path() /
-              ("halfmark_cli_" + std::to_string(::getpid()) + "_" + std::to_string(count_++))) {
-    fs::create_directories(path_);
-  }
-  ~Folder() { fs::remove_all(path_); }
-  std::string operator/(const std::string& name) const { return (path_ / name).string(); }
-  const fs::path& path() const { return path_; }
-
- private:
-  static inline int count_ = 0;
-  fs::path path_;
+struct Folder : halfmark::TemporaryFolder {  // names as the command line takes them
+  std::string operator/(const std::string& name) const { return (path() / name).string(); }
 };
 
 void write_text(const std::string& file, const std::string& text) {
@@ -112,28 +101,28 @@ bool only_hidden_or_nothing_left(const fs::path& folder) {
 }  // namespace
 
 TEST_CASE("help, version and wrong usage") {
-  CHECK(halfmark("--help").status == 0);
-  CHECK(halfmark("--version").status == 0);
-  CHECK(halfmark("inspect --help").text.find("--spec") != std::string::npos);
-  CHECK(halfmark("").status == 64);
-  CHECK(halfmark("inspct").status == 64);
-  CHECK(halfmark("inspect volume.mha --spce s.json --out d").status == 64);
-  CHECK(halfmark("demo --list").status == 0);
-  CHECK(halfmark("demo no_such_part --out d").status == 64);
-  CHECK(halfmark("levels x.mha --voxel-size 0").status == 64);
-  CHECK(halfmark("levels x.mha --voxel-size 0.1,0.1").status == 64);
-  CHECK(halfmark("levels x.mha --voxel-size nan").status == 64);
+  CHECK(run_halfmark("--help").status == 0);
+  CHECK(run_halfmark("--version").status == 0);
+  CHECK(run_halfmark("inspect --help").text.find("--spec") != std::string::npos);
+  CHECK(run_halfmark("").status == 64);
+  CHECK(run_halfmark("inspct").status == 64);
+  CHECK(run_halfmark("inspect volume.mha --spce s.json --out d").status == 64);
+  CHECK(run_halfmark("demo --list").status == 0);
+  CHECK(run_halfmark("demo no_such_part --out d").status == 64);
+  CHECK(run_halfmark("levels x.mha --voxel-size 0").status == 64);
+  CHECK(run_halfmark("levels x.mha --voxel-size 0.1,0.1").status == 64);
+  CHECK(run_halfmark("levels x.mha --voxel-size nan").status == 64);
 }
 
 TEST_CASE("a missing volume and a missing spec are input missing") {
   const Folder folder;
   write_text(folder / "spec.json", sound_spec);
-  const Outcome volume = halfmark("inspect " + (folder / "none.mha") + " --spec " + (folder / "spec.json") +
-                                  " --out " + (folder / "out"));
+  const Outcome volume = run_halfmark("inspect " + (folder / "none.mha") + " --spec " +
+                                      (folder / "spec.json") + " --out " + (folder / "out"));
   CHECK(volume.status == 66);
   CHECK(volume.text.find("none.mha") != std::string::npos);
-  const Outcome spec = halfmark("inspect " + (folder / "none.mha") + " --spec " + (folder / "none.json") +
-                                " --out " + (folder / "out"));
+  const Outcome spec = run_halfmark("inspect " + (folder / "none.mha") + " --spec " + (folder / "none.json") +
+                                    " --out " + (folder / "out"));
   CHECK(spec.status == 66);
   CHECK_FALSE(fs::exists(folder / "out"));
 }
@@ -145,8 +134,8 @@ TEST_CASE("volumes without two phases are bad data with one clear line") {
   write_text(folder / "empty.mha", "");
   write_volume(folder / "noise.mha", 48, [](int, int, int) { return 20000.0; });
   for (const std::string name : {"constant.mha", "noise.mha", "empty.mha"}) {
-    const Outcome outcome = halfmark("inspect " + (folder / name) + " --spec " + (folder / "spec.json") +
-                                     " --out " + (folder / "out"));
+    const Outcome outcome = run_halfmark("inspect " + (folder / name) + " --spec " + (folder / "spec.json") +
+                                         " --out " + (folder / "out"));
     INFO(name << ": " << outcome.text);
     CHECK(outcome.status == 65);
     CHECK(std::count(outcome.text.begin(), outcome.text.end(), '\n') == 1);
@@ -160,19 +149,19 @@ TEST_CASE("every problem of a spec is named by its place") {
     {"id": "R1", "zone": "part", "quantity": "porositty", "max": 1},
     {"id": "R2", "zone": "nowhere", "quantity": "porosity", "max": "1"},
     {"id": "R3", "zone": "part", "quantity": "porosity", "maximum": 1}]})");
-  const Outcome outcome = halfmark("spec check " + (folder / "bad.json"));
+  const Outcome outcome = run_halfmark("spec check " + (folder / "bad.json"));
   INFO(outcome.text);
   CHECK(outcome.status == 65);
   for (const char* words : {"R1", "porosity", "R2", "R3", "max"})
     CHECK(outcome.text.find(words) != std::string::npos);
   write_text(folder / "none.json", R"({"spec_version": 1, "requirements": []})");
-  CHECK(halfmark("spec check " + (folder / "none.json")).status == 65);
+  CHECK(run_halfmark("spec check " + (folder / "none.json")).status == 65);
   write_text(folder / "good.json", sound_spec);
-  CHECK(halfmark("spec check " + (folder / "good.json")).status == 0);
+  CHECK(run_halfmark("spec check " + (folder / "good.json")).status == 0);
 }
 
 TEST_CASE("the spec's schema is printed whole") {
-  const Outcome outcome = halfmark("spec schema");
+  const Outcome outcome = run_halfmark("spec schema");
   CHECK(outcome.status == 0);
   std::ifstream file(HALFMARK_SOURCE_DIR "/io/spec.schema.json");
   CHECK(outcome.text == std::string(std::istreambuf_iterator<char>(file), {}));
@@ -186,8 +175,8 @@ TEST_CASE("an inspection gives its verdict as exit status, and the same bytes ea
       R"({"spec_version": 1, "requirements": [{"id": "R1", "zone": "part", "quantity": "pore_diameter", "max": 0.5}]})");
   write_volume(folder / "block.mha", 64, block_with_cavity);
   const auto inspect = [&](const std::string& spec, const std::string& out, const std::string& more) {
-    return halfmark("inspect " + (folder / "block.mha") + " --spec " + (folder / spec) + " --out " +
-                    (folder / out) + " " + more);
+    return run_halfmark("inspect " + (folder / "block.mha") + " --spec " + (folder / spec) + " --out " +
+                        (folder / out) + " " + more);
   };
   const Outcome accepted = inspect("spec.json", "a", "--serial 17 --threads 1");
   INFO(accepted.text);
@@ -218,8 +207,8 @@ TEST_CASE("output that cannot be made is told before the long work") {
   write_text(folder / "taken", "x");
   const std::string start =
       "inspect " + (folder / "block.mha") + " --spec " + (folder / "spec.json") + " --out ";
-  CHECK(halfmark(start + (folder / "taken")).status == 73);
-  CHECK(halfmark(start + "/proc/halfmark_out").status == 73);
+  CHECK(run_halfmark(start + (folder / "taken")).status == 73);
+  CHECK(run_halfmark(start + "/proc/halfmark_out").status == 73);
 }
 
 TEST_CASE("running out of space leaves nothing behind") {
@@ -280,13 +269,13 @@ TEST_CASE("exclusions are read, applied and reported") {
     {"position_mm": [3.2, 3.2, 3.2], "tolerance_mm": 0.3, "reason": "machined away", "by": "inspector", "when": "2026-01-31"}]})");
   const std::string start = "inspect " + (folder / "block.mha") + " --spec " + (folder / "strict.json") +
                             " --out " + (folder / "out");
-  const Outcome outcome = halfmark(start + " --dispositions " + (folder / "d.json"));
+  const Outcome outcome = run_halfmark(start + " --dispositions " + (folder / "d.json"));
   INFO(outcome.text);
   CHECK(outcome.status == 0);
   CHECK(read_text(folder / "out/report.html").find("machined away") != std::string::npos);
   write_text(
       folder / "bad.json",
       R"({"dispositions_version": 1, "dispositions": [{"position_mm": [1, 2], "tolerance_mm": 0.3}]})");
-  CHECK(halfmark(start + " --dispositions " + (folder / "bad.json")).status == 65);
-  CHECK(halfmark(start + " --dispositions " + (folder / "none.json")).status == 66);
+  CHECK(run_halfmark(start + " --dispositions " + (folder / "bad.json")).status == 65);
+  CHECK(run_halfmark(start + " --dispositions " + (folder / "none.json")).status == 66);
 }

@@ -10,8 +10,8 @@
 #include "reports/scene_render.h"
 #include "reports/slice_figure.h"
 #include "reports/slice_plan.h"
-#include "support/catch.h"
-#include "support/sample_run.h"
+#include "tests/support/catch.h"
+#include "tests/support/sample_run.h"
 
 using namespace halfmark;
 

@@ -6,17 +6,13 @@
 #include "io/output_file.h"
 #include "io/problem.h"
 #include "tests/support/catch.h"
+#include "tests/support/temporary_folder.h"
 
 namespace fs = std::filesystem;
 using halfmark::OutputSet;
+using halfmark::TemporaryFolder;
 
 namespace {
-
-struct TemporaryFolder {
-  fs::path path = fs::temp_directory_path() / ("halfmark_output_" + std::to_string(::getpid()));
-  TemporaryFolder() { fs::create_directories(path); }
-  ~TemporaryFolder() { fs::remove_all(path); }
-};
 
 std::string text_of(const fs::path& file) {
   std::ifstream in(file, std::ios::binary);
@@ -27,7 +23,7 @@ std::string text_of(const fs::path& file) {
 
 TEST_CASE("outputs appear together on commit") {
   const TemporaryFolder folder;
-  const fs::path out = folder.path / "a" / "b";
+  const fs::path out = folder / "a" / "b";
   OutputSet set;
   set.make_folder(out);
   set.write(out / "one.txt", "one");
@@ -41,21 +37,21 @@ TEST_CASE("outputs appear together on commit") {
 
 TEST_CASE("nothing stays behind without commit") {
   const TemporaryFolder folder;
-  const fs::path out = folder.path / "a" / "b";
+  const fs::path out = folder / "a" / "b";
   {
     OutputSet set;
     set.make_folder(out);
     set.write(out / "one.txt", "one");
   }
-  CHECK(fs::is_empty(folder.path));
+  CHECK(fs::is_empty(folder.path()));
 }
 
 TEST_CASE("a file in the folder's place is named") {
   const TemporaryFolder folder;
-  std::ofstream(folder.path / "taken") << "x";
+  std::ofstream(folder / "taken") << "x";
   OutputSet set;
   try {
-    set.make_folder(folder.path / "taken" / "inner");
+    set.make_folder(folder / "taken" / "inner");
     FAIL("no problem was thrown");
   } catch (const halfmark::Problem& problem) {
     CHECK(problem.status() == halfmark::ExitStatus::cannot_create);
@@ -68,8 +64,8 @@ TEST_CASE("a full disk is an I/O error that names the file") {
   if (::access("/dev/full", W_OK) != 0) return;
   // /dev/full refuses every byte; the set's temporary would not lie there, so a link does.
   const TemporaryFolder folder;
-  const fs::path final_name = folder.path / "full.txt";
-  const fs::path temporary = folder.path / ("." + std::to_string(::getpid()) + ".part.full.txt");
+  const fs::path final_name = folder / "full.txt";
+  const fs::path temporary = folder / ("." + std::to_string(::getpid()) + ".part.full.txt");
   fs::create_symlink("/dev/full", temporary);
   try {
     set.write(final_name, "bytes");

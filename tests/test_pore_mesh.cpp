@@ -3,7 +3,7 @@
 
 #include "analysis/surface.h"
 #include "reports/pore_mesh.h"
-#include "support/catch.h"
+#include "tests/support/catch.h"
 
 using namespace halfmark;
 

@@ -4,8 +4,8 @@
 #include <sstream>
 
 #include "reports/pore_table_csv.h"
-#include "support/catch.h"
-#include "support/sample_run.h"
+#include "tests/support/catch.h"
+#include "tests/support/sample_run.h"
 
 using namespace halfmark;
 

@@ -1,8 +1,8 @@
 // report.html: escapes what comes from files, needs nothing from outside, says what it must.
 #include "reports/figures.h"
 #include "reports/report_html.h"
-#include "support/catch.h"
-#include "support/sample_run.h"
+#include "tests/support/catch.h"
+#include "tests/support/sample_run.h"
 
 using namespace halfmark;
 

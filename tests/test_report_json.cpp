@@ -1,5 +1,4 @@
 // result.json: valid by its schema, the same after reading back, and clear about files that are no results.
-#include <unistd.h>
 
 #include <cmath>
 #include <filesystem>
@@ -14,21 +13,19 @@
 
 #include "io/problem.h"
 #include "reports/report_json.h"
-#include "support/catch.h"
-#include "support/sample_run.h"
+#include "tests/support/catch.h"
+#include "tests/support/sample_run.h"
+#include "tests/support/temporary_folder.h"
 
 using namespace halfmark;
 namespace fs = std::filesystem;
 
 namespace {
 
-struct TemporaryFolder {
-  fs::path path = fs::temp_directory_path() / ("halfmark_json_" + std::to_string(::getpid()));
-  TemporaryFolder() { fs::create_directories(path); }
-  ~TemporaryFolder() { fs::remove_all(path); }
+struct Folder : TemporaryFolder {
   fs::path with(const std::string& name, const std::string& bytes) const {
-    std::ofstream(path / name, std::ios::binary) << bytes;
-    return path / name;
+    std::ofstream(*this / name, std::ios::binary) << bytes;
+    return *this / name;
   }
 };
 
@@ -116,7 +113,7 @@ TEST_CASE("result.json is valid by its schema, and the schema refuses what it sh
 }
 
 TEST_CASE("Reading back gives every number bit for bit and writing it again the same bytes") {
-  const TemporaryFolder folder;
+  const Folder folder;
   const Inspection in = full_inspection();
   const std::string text = result_to_json(in);
   const Inspection back = read_result(folder.with("result.json", text));
@@ -136,7 +133,7 @@ TEST_CASE("Reading back gives every number bit for bit and writing it again the 
   CHECK(back.verdict == Verdict::reject);
   REQUIRE(back.spec.zones.size() == 2);
   CHECK(back.spec.zones[1].shape == ZoneShape::mesh);
-  CHECK(back.spec.zones[1].file == folder.path / "meshes/rib.stl");
+  CHECK(back.spec.zones[1].file == folder / "meshes/rib.stl");
   REQUIRE(back.spec.requirements.size() == 3);
   CHECK(back.spec.requirements[0].max == in.spec.requirements[0].max);
   CHECK(back.grey_levels.histogram.counts.size() <= 1024);
@@ -176,7 +173,7 @@ TEST_CASE("Bytes that are not UTF-8 do not stop the result") {
 }
 
 TEST_CASE("Every truncation of a result and other kinds of files get one clear sentence") {
-  const TemporaryFolder folder;
+  const Folder folder;
   const std::string text = result_to_json(full_inspection());
   // Cutting only the last line end leaves whole JSON.
   for (std::size_t length = 0; length + 2 < text.size(); length += 97) {
@@ -189,14 +186,14 @@ TEST_CASE("Every truncation of a result and other kinds of files get one clear s
   CHECK(problem_of(folder.with("b.json", "[1]"), ExitStatus::bad_data).find("b.json") != std::string::npos);
   CHECK(problem_of(folder.with("c.json", std::string(100000, '[')), ExitStatus::bad_data).find("c.json") !=
         std::string::npos);
-  CHECK(problem_of(folder.path / "none.json", ExitStatus::input_missing).find("no such file") !=
+  CHECK(problem_of(folder / "none.json", ExitStatus::input_missing).find("no such file") !=
         std::string::npos);
-  CHECK(problem_of(folder.path, ExitStatus::bad_data).find("is a folder") != std::string::npos);
+  CHECK(problem_of(folder.path(), ExitStatus::bad_data).find("is a folder") != std::string::npos);
   CHECK(problem_of("/dev/zero", ExitStatus::bad_data).find("plain file") != std::string::npos);
 }
 
 TEST_CASE("A wrong member is named with its place") {
-  const TemporaryFolder folder;
+  const Folder folder;
   const auto broken = [&](auto&& change) {
     nlohmann::ordered_json json = nlohmann::ordered_json::parse(result_to_json(full_inspection()));
     change(json);

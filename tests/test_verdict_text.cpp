@@ -1,9 +1,9 @@
 // The verdict in words and the rounding of numbers.
-#include "reports/number_text.h"
+#include "analysis/number_text.h"
 #include "reports/requirement_text.h"
 #include "reports/verdict_text.h"
-#include "support/catch.h"
-#include "support/sample_run.h"
+#include "tests/support/catch.h"
+#include "tests/support/sample_run.h"
 
 using namespace halfmark;
 

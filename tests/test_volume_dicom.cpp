@@ -1,6 +1,4 @@
 // DICOM series in: order, geometry and values of known series; broken ones are told by a sentence.
-#include <unistd.h>
-
 #include <cstring>
 #include <filesystem>
 #include <fstream>
@@ -11,28 +9,17 @@
 #include "io/volume_open.h"
 #include "tests/support/catch.h"
 #include "tests/support/dicom_files.h"
+#include "tests/support/temporary_folder.h"
 
 namespace fs = std::filesystem;
 using namespace halfmark;
 
 namespace {
 
-class Folder {
- public:
-  Folder()
-      : path_(fs::temp_directory_path() /
-              ("halfmark_dicom_" + std::to_string(::getpid()) + "_" + std::to_string(count_++))) {
-    fs::create_directories(path_);
-  }
-  ~Folder() { fs::remove_all(path_); }
+struct Folder : TemporaryFolder {
   void put(const std::string& name, const std::string& bytes) const {
-    std::ofstream(path_ / name, std::ios::binary) << bytes;
+    std::ofstream(*this / name, std::ios::binary) << bytes;
   }
-  const fs::path& path() const { return path_; }
-
- private:
-  static inline int count_ = 0;
-  fs::path path_;
 };
 
 template <class T>

@@ -11,7 +11,6 @@
 #include <itkNiftiImageIO.h>
 #include <itkNrrdImageIO.h>
 #include <itkTIFFImageIO.h>
-#include <unistd.h>
 #include <vtkDataArray.h>
 #include <vtkImageData.h>
 #include <vtkMatrix3x3.h>
@@ -36,6 +35,7 @@
 #include "io/volume_open.h"
 #include "tests/support/catch.h"
 #include "tests/support/dicom_files.h"
+#include "tests/support/temporary_folder.h"
 
 namespace fs = std::filesystem;
 using namespace halfmark;
@@ -46,22 +46,6 @@ constexpr VoxelType all_types[] = {VoxelType::u8, VoxelType::i8, VoxelType::u16,
                                    VoxelType::f32};
 // NIfTI keeps places as floats.
 constexpr double float_places = 2e-6, double_places = 1e-12;
-
-class Folder {
- public:
-  Folder()
-      : path_(fs::temp_directory_path() /
-              ("halfmark_exchange_" + std::to_string(::getpid()) + "_" + std::to_string(count_++))) {
-    fs::create_directories(path_);
-  }
-  ~Folder() { fs::remove_all(path_); }
-  fs::path operator/(const std::string& name) const { return path_ / name; }
-  const fs::path& path() const { return path_; }
-
- private:
-  static inline int count_ = 0;
-  fs::path path_;
-};
 
 enum class Turn { none, quarter, tilted, mirrored };
 
@@ -171,7 +155,7 @@ MemoryVolume read_with_itk(itk::ImageIOBase* io, const fs::path& file, VoxelType
 template <class MakeIo>
 void exchange(const std::string& written, const std::string& read, MakeIo make_io, bool compressed, Turn turn,
               double tolerance_mm) {
-  const Folder folder;
+  const TemporaryFolder folder;
   for (const VoxelType type : all_types) {
     for (unsigned seed = 1; seed <= 3; ++seed) {
       INFO(written << ", compressed " << compressed << ", turn " << static_cast<int>(turn) << ", type "
@@ -235,7 +219,7 @@ TEST_CASE("NIfTI agrees with ITK both ways") {
 }
 
 TEST_CASE("big-endian files of each format are read as ITK reads them") {
-  const Folder folder;
+  const TemporaryFolder folder;
   for (const VoxelType type : {VoxelType::u16, VoxelType::i16, VoxelType::f32}) {
     INFO("type " << static_cast<int>(type));
     const MemoryVolume truth = random_volume(type, 5, Turn::tilted);
@@ -289,7 +273,7 @@ TEST_CASE("big-endian files of each format are read as ITK reads them") {
 }
 
 TEST_CASE("grey values that a NIfTI header scales are read as ITK reads them") {
-  const Folder folder;
+  const TemporaryFolder folder;
   for (const VoxelType type : {VoxelType::u8, VoxelType::i16}) {
     write_volume(random_volume(type, 3, Turn::quarter), folder / "s.nii");
     std::string bytes = file_bytes(folder / "s.nii");
@@ -307,7 +291,7 @@ TEST_CASE("grey values that a NIfTI header scales are read as ITK reads them") {
 }
 
 TEST_CASE("TIFF pages agree with ITK both ways") {
-  const Folder folder;
+  const TemporaryFolder folder;
   for (const VoxelType type : all_types) {
     for (const bool compressed : {false, true}) {
       INFO("type " << static_cast<int>(type) << ", compressed " << compressed);
@@ -329,7 +313,7 @@ TEST_CASE("TIFF pages agree with ITK both ways") {
 }
 
 TEST_CASE("VTK image data agrees with VTK both ways") {
-  const Folder folder;
+  const TemporaryFolder folder;
   const int vtk_types[] = {VTK_UNSIGNED_CHAR, VTK_SIGNED_CHAR, VTK_UNSIGNED_SHORT, VTK_SHORT, VTK_FLOAT};
   for (const VoxelType type : all_types) {
     for (int form = 0; form < 8; ++form) {
@@ -383,7 +367,7 @@ TEST_CASE("VTK image data agrees with VTK both ways") {
 }
 
 TEST_CASE("no flipped byte of packed VTK image data goes unnoticed") {
-  const Folder folder;
+  const TemporaryFolder folder;
   const MemoryVolume truth = random_volume(VoxelType::u16, 2, Turn::none);
   vtkNew<vtkImageData> image;
   image->SetDimensions(static_cast<int>(truth.geometry().size[0]), static_cast<int>(truth.geometry().size[1]),
@@ -425,7 +409,7 @@ TEST_CASE("no flipped byte of packed VTK image data goes unnoticed") {
 }
 
 TEST_CASE("a DICOM series is read as ITK reads it, plain and compressed") {
-  const Folder folder;
+  const TemporaryFolder folder;
   std::vector<std::string> names;
   for (int k = 0; k < 4; ++k) {
     DicomSlice slice;
@@ -453,7 +437,7 @@ TEST_CASE("a DICOM series is read as ITK reads it, plain and compressed") {
   check_same(*plain.source, of_itk, 1e-6);
 
   // Each slice again, packed without loss.
-  const Folder packed;
+  const TemporaryFolder packed;
   for (std::size_t k = 0; k < names.size(); ++k) {
     using Slice = itk::Image<std::int16_t, 2>;
     auto io = itk::GDCMImageIO::New();

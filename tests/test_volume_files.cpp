@@ -1,6 +1,4 @@
 // Volumes in and out: round trips of every format and type, other libraries' readers, broken files.
-#include <unistd.h>
-
 #include <cstring>
 #include <filesystem>
 #include <fstream>
@@ -13,27 +11,12 @@
 #include "io/mesh_file.h"
 #include "io/volume_open.h"
 #include "tests/support/catch.h"
+#include "tests/support/temporary_folder.h"
 
 namespace fs = std::filesystem;
 using namespace halfmark;
 
 namespace {
-
-class Folder {
- public:
-  Folder()
-      : path_(fs::temp_directory_path() /
-              ("halfmark_io_" + std::to_string(::getpid()) + "_" + std::to_string(count_++))) {
-    fs::create_directories(path_);
-  }
-  ~Folder() { fs::remove_all(path_); }
-  fs::path operator/(const std::string& name) const { return path_ / name; }
-  const fs::path& path() const { return path_; }
-
- private:
-  static inline int count_ = 0;
-  fs::path path_;
-};
 
 std::string bytes_of(const fs::path& file) {
   std::ifstream in(file, std::ios::binary);
@@ -94,7 +77,7 @@ std::string meta_header(const std::string& changed_key, const std::string& value
 }  // namespace
 
 TEST_CASE("every format and voxel type comes back as it was written") {
-  const Folder folder;
+  const TemporaryFolder folder;
   for (const std::string name :
        {"v.mha", "v.mhd", "v.nrrd", "v.nhdr", "v.raw", "v.vti", "v.nii", "v.nii.gz", "v.tif"}) {
     for (const VoxelType type :
@@ -120,7 +103,7 @@ TEST_CASE("every format and voxel type comes back as it was written") {
 }
 
 TEST_CASE("big-endian voxels are turned, a given voxel size wins") {
-  const Folder folder;
+  const TemporaryFolder folder;
   write_bytes(folder / "b.raw", std::string("\x01\x02\x03\x04\x05\x06\x07\x08", 8));
   write_bytes(folder / "b.raw.json", R"({"size": [2, 1, 2], "voxel_type": "u16", "byte_order": "big"})");
   OpenOptions options;
@@ -134,7 +117,7 @@ TEST_CASE("big-endian voxels are turned, a given voxel size wins") {
 }
 
 TEST_CASE("folders of slices are ordered by number; gaps and strangers are named") {
-  const Folder folder;
+  const TemporaryFolder folder;
   const auto slice = [&](const std::string& name, std::int64_t width, int value) {
     VolumeGeometry g;
     g.size = {width, 3, 2};
@@ -156,7 +139,7 @@ TEST_CASE("folders of slices are ordered by number; gaps and strangers are named
 }
 
 TEST_CASE("headers that lie are told so") {
-  const Folder folder;
+  const TemporaryFolder folder;
   const auto with = [&](const std::string& key, const std::string& value, std::size_t bytes = 64) {
     write_bytes(folder / "h.mha", meta_header(key, value) + std::string(bytes, 'x'));
     return problem_of(folder / "h.mha");
@@ -187,7 +170,7 @@ TEST_CASE("headers that lie are told so") {
 }
 
 TEST_CASE("a piece of image data that is larger than the whole is refused before it takes memory") {
-  const Folder folder;
+  const TemporaryFolder folder;
   write_volume(sample(VoxelType::u16), folder / "p.vti");
   std::string bytes = bytes_of(folder / "p.vti");
   const std::string piece = "<Piece Extent=\"0 4";
@@ -198,7 +181,7 @@ TEST_CASE("a piece of image data that is larger than the whole is refused before
 }
 
 TEST_CASE("a packed TIFF that promises far more than its bytes can hold is refused") {
-  const Folder folder;
+  const TemporaryFolder folder;
   const auto number = [](std::uint32_t v, int bytes) {
     std::string out;
     for (int i = 0; i < bytes; ++i) out += static_cast<char>((v >> (8 * i)) & 255);
@@ -222,7 +205,7 @@ TEST_CASE("a packed TIFF that promises far more than its bytes can hold is refus
 }
 
 TEST_CASE("every truncation of every format is refused or read whole, never worse") {
-  const Folder folder;
+  const TemporaryFolder folder;
   for (const std::string name : {"t.mha", "t.nrrd", "t.nii", "t.nii.gz", "t.tif", "t.vti"}) {
     write_volume(sample(VoxelType::u16), folder / name);
     const std::string whole = bytes_of(folder / name);
@@ -240,7 +223,7 @@ TEST_CASE("every truncation of every format is refused or read whole, never wors
 }
 
 TEST_CASE("meshes come back; broken ones are refused") {
-  const Folder folder;
+  const TemporaryFolder folder;
   TriangleMesh mesh;
   mesh.vertices_mm = {{0, 0, 0}, {1, 0, 0}, {0, 1, 0}, {0, 0, 1}};
   mesh.triangles = {{0, 2, 1}, {0, 1, 3}, {0, 3, 2}, {1, 2, 3}};

@@ -1,6 +1,5 @@
 // Zones on the voxels of a turned, shifted volume of oblong voxels: against a plain question per voxel,
 // against the volumes of the solids, and the sums over them.
-#include <unistd.h>
 
 #include <algorithm>
 #include <cmath>
@@ -19,6 +18,7 @@
 #include "tests/support/catch.h"
 #include "tests/support/label_runs.h"
 #include "tests/support/phantoms.h"
+#include "tests/support/temporary_folder.h"
 
 using namespace halfmark;
 using namespace halfmark::tests;
@@ -172,12 +172,6 @@ bool inside_mesh(const TriangleMesh& mesh, const Vec3& p) {
   }
   return std::abs(angle) > 2 * pi;
 }
-
-struct TemporaryFile {
-  std::filesystem::path path =
-      std::filesystem::temp_directory_path() / ("halfmark_zone_" + std::to_string(::getpid()) + ".stl");
-  ~TemporaryFile() { std::filesystem::remove(path); }
-};
 
 std::string sentence_of(const std::function<void()>& action) {
   try {
@@ -382,12 +376,13 @@ TEST_CASE("a mesh zone holds what lies inside the closed mesh") {
   const PartMap part = ball_part(g);
   const Vec3 centre = middle_of(g) + Vec3{1.1, -0.6, 0.3};
   const TriangleMesh mesh = ball_mesh(centre, 2.9, 2);
-  const TemporaryFile file;
-  write_stl(mesh, file.path);
+  const TemporaryFolder folder;
+  const std::filesystem::path file = folder / "zone.stl";
+  write_stl(mesh, file);
   ZoneSpec zone;
   zone.id = "mesh";
   zone.shape = ZoneShape::mesh;
-  zone.file = file.path;
+  zone.file = file;
   const ZoneSet zones = zones_of({zone}, g, part);
   const Comparison found = compare(zones, 0, g, [&](const Vec3& p) { return inside_mesh(mesh, p); });
   const double volume = static_cast<double>(found.voxels) * g.voxel_volume_mm3(),
@@ -405,12 +400,13 @@ TEST_CASE("a mesh that reaches beyond the volume, its corners on voxel centres")
   const PartMap part = ball_part(g);
   // An octahedron about a voxel centre: rows meet its corners and edges exactly.
   const TriangleMesh mesh = ball_mesh({10, 9, 8}, 12, 0);
-  const TemporaryFile file;
-  write_stl(mesh, file.path);
+  const TemporaryFolder folder;
+  const std::filesystem::path file = folder / "zone.stl";
+  write_stl(mesh, file);
   ZoneSpec zone;
   zone.id = "mesh";
   zone.shape = ZoneShape::mesh;
-  zone.file = file.path;
+  zone.file = file;
   const ZoneSet zones = zones_of({zone}, g, part);
   std::int64_t wrong = 0;
   std::vector<Run> runs;
@@ -510,12 +506,13 @@ TEST_CASE("a mesh with a hole is refused") {
   const VolumeGeometry g = turned_geometry();
   TriangleMesh mesh = ball_mesh(middle_of(g), 2, 1);
   mesh.triangles.pop_back();
-  const TemporaryFile file;
-  write_stl(mesh, file.path);
+  const TemporaryFolder folder;
+  const std::filesystem::path file = folder / "zone.stl";
+  write_stl(mesh, file);
   ZoneSpec zone;
   zone.id = "shell";
   zone.shape = ZoneShape::mesh;
-  zone.file = file.path;
+  zone.file = file;
   const std::string sentence = sentence_of([&] { zones_of({zone}, g, ball_part(g)); });
   INFO(sentence);
   CHECK(holds(sentence, "zones: shell: the mesh is not closed: 3 edges"));

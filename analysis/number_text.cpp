@@ -1,9 +1,10 @@
-#include "reports/number_text.h"
+#include "analysis/number_text.h"
 
 #include <algorithm>
 #include <array>
 #include <charconv>
 #include <cmath>
+#include <cstdio>
 #include <filesystem>
 
 namespace halfmark {
@@ -57,6 +58,12 @@ std::string measured_text(double value, double expanded_uncertainty, const std::
   // Without an uncertainty the number is a count or a plain fact.
   const std::string number = r.uncertainty == "0" ? r.value : r.value + " ± " + r.uncertainty;
   return number + (unit.empty() ? "" : " " + unit);
+}
+
+std::string sentence(const char* format, double a, double b) {
+  std::array<char, 300> buffer;
+  std::snprintf(buffer.data(), buffer.size(), format, a, b);
+  return buffer.data();
 }
 
 std::string position_text(const double* mm, double voxel_mm) {

@@ -1,5 +1,5 @@
 // Numbers and foreign text as people read them: rounded to what is known, with a decimal point whatever the
-// locale. Built on by verdict_text.h and the reports; result.json and pores.csv do not round this way.
+// locale. Reasons, warnings and reports are written with it; result.json and pores.csv do not round this way.
 #pragma once
 
 #include <string>
@@ -21,6 +21,8 @@ struct RoundedMeasure {
 RoundedMeasure rounded(double value, double expanded_uncertainty);
 // "0.62 ± 0.05 mm"
 std::string measured_text(double value, double expanded_uncertainty, const std::string& unit);
+// printf with up to two numbers, for sentences.
+std::string sentence(const char* format, double a, double b = 0);
 // "12.3, 4.5, 6.7" with two decimals more than the voxel's leading digit.
 std::string position_text(const double* mm, double voxel_mm);
 
